@@ -1,0 +1,7 @@
+"""``python -m tbkit``."""
+
+import sys
+
+from tbkit.cli import main
+
+sys.exit(main())

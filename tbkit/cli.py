@@ -1,0 +1,180 @@
+"""The command line."""
+
+from __future__ import annotations
+
+import argparse
+import sys
+from collections.abc import Sequence
+from pathlib import Path
+from typing import Self
+
+from rich.console import Console
+
+from tbkit import __version__, report
+from tbkit.contract_file import read_contract
+from tbkit.errors import InputError, Problem, SimulatorError
+from tbkit.profile import Profile
+from tbkit.profile_file import read_profile
+from tbkit.regression import builtin_profiles
+from tbkit.simulators import CHOICES, find
+from tbkit.verify import Results, plan, verify
+from tbkit.yamltree import nearest
+
+EXIT_PASS, EXIT_FAIL, EXIT_INPUT, EXIT_SIMULATOR = 0, 1, 2, 3
+
+_EPILOG = """\
+exit codes:
+  0  every profile passed
+  1  the decoder was found wrong
+  2  an input file or an option is wrong, or nothing was compared
+  3  the simulator failed, is missing, or would not compile the decoder
+"""
+
+
+def _parser() -> argparse.ArgumentParser:
+    parser = argparse.ArgumentParser(prog="tbkit", description="Proves that a quadrature decoder in RTL counts right.")
+    parser.add_argument("--version", action="version", version=f"tbkit {__version__}")
+    commands = parser.add_subparsers(dest="command", required=True, metavar="COMMAND")
+    check = commands.add_parser(
+        "verify",
+        help="run motion profiles on a decoder and check every output",
+        description="Runs the built-in regression, and your own profiles, on the decoder that DECODER describes.",
+        epilog=_EPILOG,
+        formatter_class=argparse.RawDescriptionHelpFormatter,
+    )
+    check.add_argument("decoder", metavar="DECODER", type=Path, help="decoder file (YAML)")
+    check.add_argument("profiles", metavar="PROFILE", type=Path, nargs="*", help="your own profiles, run after the built-in ones")
+    check.add_argument(
+        "--simulator", choices=CHOICES, default="auto", help="auto: Icarus if it is there, else Verilator, else the embedded one"
+    )
+    check.add_argument("--seed", type=_seed, default=1, metavar="N", help="for everything that is random (default: 1)")
+    check.add_argument("--out", type=Path, default=Path("tbkit-out"), metavar="DIR", help="build folder (default: tbkit-out)")
+    check.add_argument("--json", type=Path, metavar="FILE", help="write the results as JSON")
+    check.add_argument("--junit", type=Path, metavar="FILE", help="write the results as JUnit XML")
+    check.add_argument(
+        "--only", action="append", default=[], metavar="NAME", help="run only this profile; may be given several times"
+    )
+    return parser
+
+
+def _seed(text: str) -> int:
+    if text.isdecimal() and int(text) < 1 << 63:
+        return int(text)
+    msg = f"{text!r} is not a whole number from 0 to 2^63-1"
+    raise argparse.ArgumentTypeError(msg)
+
+
+def _profiles(own: Sequence[Path], only: Sequence[str]) -> list[Profile]:
+    """The built-in regression and the user's own profiles, or those named by ``only``.
+
+    Raises:
+        InputError: with the problems of every file at once, or a name that no profile has.
+    """
+    problems: list[Problem] = []
+    profiles = builtin_profiles()
+    for path in own:
+        try:
+            profiles.append(read_profile(path))
+        except InputError as error:
+            problems += error.problems
+    seen: dict[str, Path] = {}
+    for profile in profiles:
+        if profile.name in seen and not problems:
+            problems.append(Problem(str(profile.file), 1, f"profile: the name {profile.name!r} is taken already; choose another"))
+        seen[profile.name] = profile.file
+    unknown = [name for name in only if name not in seen]
+    problems += [
+        Problem("--only", 0, f"there is no profile {name!r}; there are {', '.join(seen)}{nearest(name, seen)}") for name in unknown
+    ]
+    if problems:
+        raise InputError(problems)
+    return [profile for profile in profiles if not only or profile.name in only]
+
+
+def _verify(options: argparse.Namespace, console: Console, complain: Console) -> int:
+    problems: list[Problem] = []
+    contract, profiles = None, []
+    # Both kinds of file are read before anything is said, so that all their problems are told at once.
+    try:
+        contract = read_contract(options.decoder)
+    except InputError as error:
+        problems += error.problems
+    try:
+        profiles = _profiles(options.profiles, options.only)
+    except InputError as error:
+        problems += error.problems
+    if problems or contract is None:
+        raise InputError(problems)
+    planned = plan(contract, profiles, options.seed)
+    if not planned.stimuli:
+        problems = [Problem(str(profile.name), 0, f"left out: {profile.reason}") for profile in planned.left_out]
+        raise InputError([*problems, Problem(str(options.decoder), 1, "no profile is left to run on this decoder")])
+    results: list[Results] = []
+    failure: SimulatorError | None = None
+    options.out.mkdir(parents=True, exist_ok=True)
+    (options.out / ".gitignore").write_text("*\n", "utf-8")
+    for simulator in find(options.simulator):
+        try:
+            with _Progress(complain) as progress:
+                results.append(verify(contract, planned, simulator, options.out.resolve(), progress))
+        except SimulatorError as error:
+            failure = failure or error
+            complain.print(f"tbkit: {error}", markup=False)
+            continue
+        report.print_results(console, contract, results[-1], options.profiles)
+    if options.json and results:
+        options.json.write_text(report.as_json(contract, options.seed, results), "utf-8")
+    if options.junit and results:
+        options.junit.write_text(report.as_junit(contract, results), "utf-8")
+    verdicts = {one.verdict for one in results}
+    if "fail" in verdicts:
+        return EXIT_FAIL
+    if failure or any(one.failure for one in results):
+        return EXIT_SIMULATOR
+    return EXIT_INPUT if "error" in verdicts else EXIT_PASS
+
+
+class _Progress:
+    """One line that says what is going on, on a terminal; nothing where the output is piped."""
+
+    def __init__(self, console: Console) -> None:
+        self._status = console.status("starting") if console.is_terminal else None
+
+    def __enter__(self) -> Self:
+        if self._status:
+            self._status.start()
+        return self
+
+    def __exit__(self, *_: object) -> None:
+        if self._status:
+            self._status.stop()
+
+    def __call__(self, text: str) -> None:
+        if self._status:
+            self._status.update(text)
+
+
+def main(arguments: Sequence[str] | None = None) -> int:
+    """Run the command line; returns the exit code."""
+    options = _parser().parse_args(arguments)
+    console = Console(highlight=False, soft_wrap=True)
+    complain = Console(stderr=True, highlight=False, soft_wrap=True)
+    try:
+        return _verify(options, console, complain)
+    except InputError as error:
+        for problem in error.problems:
+            complain.print(f"{problem}" if problem.line else f"{problem.file}: {problem.text}", markup=False)
+        return EXIT_INPUT
+    except SimulatorError as error:
+        complain.print(f"tbkit: {error}", markup=False)
+        return EXIT_SIMULATOR
+    except OSError as error:
+        complain.print(f"tbkit: cannot write {error.filename}: {error.strerror}", markup=False)
+        return EXIT_INPUT
+    except KeyboardInterrupt:
+        complain.print("tbkit: interrupted")
+        return EXIT_SIMULATOR
+
+
+if __name__ == "__main__":
+    sys.exit(main())

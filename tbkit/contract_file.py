@@ -1,0 +1,497 @@
+"""Reads a decoder file into a :class:`~tbkit.contract.Contract`."""
+
+from __future__ import annotations
+
+import re
+from collections.abc import Sequence
+from dataclasses import dataclass
+from fractions import Fraction
+from pathlib import Path
+
+from tbkit import units
+from tbkit.contract import (
+    A_LEADS_B,
+    Clock,
+    Constant,
+    Contract,
+    Count,
+    Design,
+    Direction,
+    Error,
+    Filter,
+    Index,
+    Latency,
+    Port,
+    Reset,
+    Span,
+    Start,
+)
+from tbkit.yamltree import Entry, Section, is_identifier, load, nearest, one_of
+
+FORMAT = 1
+LONGEST_CLOCKS = 1_000_000
+VERILOG_SUFFIXES = (".v", ".sv")
+SHORTEST_PERIOD_PS = 8
+
+_KEYS = (
+    "tbkit", "decoder", "clock", "reset", "start", "lines", "inputs", "count", "direction", "step", "error", "illegal",
+    "index", "latency", "filter", "shortest_state", "timers",
+)  # fmt: skip
+_ROLES = ("constant", "clear-error")
+# Words the format knows and this version does not act on yet: said so, never passed over.
+_LATER_KEYS = ("up", "down", "velocity", "enable", "latch")
+_LATER_ROLES = ("enable", "preload", "home", "clear", "latch", "tick")
+_LATER_STEP = ("level", "toggle")
+_LATER_ERROR = ("counter",)
+_LATER_INDEX = ("load", "latch", "pulse")
+_LATER_DIRECTION = ("with-step",)
+
+
+def _choice(entry: Entry, allowed: Sequence[str], later: Sequence[str] = ()) -> str:
+    """One of ``allowed``; a word of ``later`` is refused as not acted on yet."""
+
+    def read(text: str) -> str:
+        if text in later:
+            msg = f"{text!r} is not supported by this version of tbkit; supported: {one_of(allowed)}"
+            raise ValueError(msg)
+        if text in allowed:
+            return text
+        msg = f"found {text!r}, expected {one_of(allowed)}{nearest(text, allowed)}"
+        raise ValueError(msg)
+
+    return entry.convert(read, allowed[0])
+
+
+def _active_low(section: Section, default: bool = False) -> bool:
+    entry = section.get("active")
+    return default if entry is None else entry.choice(("high", "low")) == "low"
+
+
+def _bit(entry: Entry) -> Port:
+    """``enc_a`` or ``ab[0]``."""
+
+    def read(text: str) -> Port:
+        match = re.fullmatch(r"([^\[\]]+)(?:\[(\d{1,3})\])?", text)
+        if match is None or not is_identifier(match.group(1)):
+            msg = f"found {text!r}, expected a port such as enc_a, or one bit of a vector such as ab[0]"
+            raise ValueError(msg)
+        return Port(match.group(1), None if match.group(2) is None else int(match.group(2)))
+
+    return entry.convert(read, Port(""))
+
+
+def _line(entry: Entry) -> Port:
+    if not entry.is_map:
+        return _bit(entry)
+    section = entry.section(("port", "active"))
+    name = section.require("port", "enc_a")
+    port = _bit(name) if name else Port("")
+    return Port(port.name, port.bit, _active_low(section))
+
+
+def _span(entry: Entry) -> Span:
+    if not entry.is_list:
+        clocks = entry.integer(0, LONGEST_CLOCKS)
+        return Span(clocks, clocks)
+    items = entry.items()
+    if len(items) != 2:
+        entry.problem(f"found {len(items)} numbers, expected a number of clocks or [least, most]")
+        return Span(0, 0)
+    least, most = (item.integer(0, LONGEST_CLOCKS) for item in items)
+    if least > most:
+        entry.problem(f"the range [{least}, {most}] runs backwards; write [{most}, {least}]")
+    return Span(least, most)
+
+
+@dataclass(slots=True)
+class _Reader:
+    """Reads the sections one by one; each method notes problems and returns something usable."""
+
+    top: Section
+    folder: Path
+
+    def design(self) -> Design:
+        entry = self.top.require("decoder", "{top: my_decoder, sources: [my_decoder.v]}")
+        if entry is None:
+            return Design("", ())
+        section = entry.section(("top", "sources", "include_dirs", "parameters"))
+        top = section.require("top", "my_decoder")
+        sources = section.require("sources", "[my_decoder.v]")
+        folders = section.get("include_dirs")
+        parameters = section.get("parameters")
+        return Design(
+            top.identifier() if top else "",
+            tuple(path for item in sources.items() for path in self._sources(item)) if sources else (),
+            tuple(self._folder(item) for item in folders.items()) if folders else (),
+            tuple(self._parameter(name, value) for name, value in parameters.pairs("a map of parameter names and values"))
+            if parameters
+            else (),
+        )
+
+    def _sources(self, entry: Entry) -> list[Path]:
+        text = entry.text()
+        if not text:
+            return []
+        if Path(text).suffix.lower() in (".vhd", ".vhdl"):
+            entry.problem(f"{text!r} is VHDL, which is not supported by this version of tbkit; supported: .v and .sv files")
+            return []
+        if any(mark in text for mark in "*?["):
+            base = Path(text).anchor
+            start = Path(base) if base else self.folder
+            found = sorted(path for path in start.glob(str(Path(text).relative_to(base)) if base else text) if path.is_file())
+            if not found:
+                entry.problem(f"no file matches {text!r} in {self.folder}")
+        else:
+            found = [self.folder / text]
+            if not found[0].is_file():
+                entry.problem(f"there is no file {str(found[0])!r}; paths start from the folder of the decoder file")
+        for path in found:
+            if path.suffix not in VERILOG_SUFFIXES:
+                entry.problem(f"{path.name!r} does not end in {one_of(VERILOG_SUFFIXES)}")
+        return [path.resolve() for path in found]
+
+    def _folder(self, entry: Entry) -> Path:
+        text = entry.text()
+        path = self.folder / text
+        if text and not path.is_dir():
+            entry.problem(f"there is no folder {str(path)!r}; paths start from the folder of the decoder file")
+        return path.resolve()
+
+    @staticmethod
+    def _parameter(name: str, entry: Entry) -> tuple[str, int | str]:
+        if not is_identifier(name):
+            entry.problem(f"{name!r} is not an HDL name")
+
+        def read(text: str) -> int | str:
+            if re.fullmatch(r"[+-]?\d{1,10}", text) and -(1 << 31) <= int(text) < 1 << 31:
+                return int(text)
+            if re.fullmatch(r"[A-Za-z0-9_ .,+-]{1,200}", text):
+                return text
+            msg = f"found {text!r}, expected a 32-bit whole number, or text of letters, digits, blanks and _.,+-"
+            raise ValueError(msg)
+
+        fallback: int | str = 0
+        return name, entry.convert(read, fallback)
+
+    def clock(self) -> Clock:
+        entry = self.top.require("clock", "{port: clk, rate: 50 MHz}")
+        if entry is None:
+            return Clock("", 1000)
+        if not entry.is_map and entry.text() == "none":
+            entry.problem("a decoder without a clock is not supported by this version of tbkit")
+            return Clock("", 1000)
+        section = entry.section(("port", "rate", "edge"))
+        port = section.require("port", "clk")
+        rate = section.require("rate", "50 MHz")
+        edge = section.get("edge")
+        period_ps = 1000
+        if rate:
+            quantity = rate.quantity("rate")
+            period_ps = round(Fraction(units.PS_PER_S) / quantity.value)
+            if not SHORTEST_PERIOD_PS <= period_ps <= units.PS_PER_S:
+                rate.problem(
+                    f"found {rate.text()!r}, expected a rate from 1 Hz to {units.PS_PER_S // SHORTEST_PERIOD_PS // 10**9} GHz"
+                )
+                period_ps = 1000
+        return Clock(
+            port.identifier() if port else "", period_ps, edge is not None and edge.choice(("rising", "falling")) == "falling"
+        )
+
+    def reset(self) -> Reset | None:
+        entry = self.top.require("reset", "{port: rst_n, active: low, kind: async, clocks: 4}` or `reset: none")
+        if entry is None or (not entry.is_map and entry.choice(("none",))):
+            return None
+        section = entry.section(("port", "active", "kind", "clocks"))
+        port = section.require("port", "rst_n")
+        active = section.require("active", "low")
+        kind = section.require("kind", "async")
+        clocks = section.get("clocks")
+        return Reset(
+            Port(port.identifier() if port else "", None, active is not None and active.choice(("high", "low")) == "low"),
+            kind is not None and kind.choice(("sync", "async")) == "async",
+            clocks.integer(1, LONGEST_CLOCKS) if clocks else 4,
+        )
+
+    def start(self) -> Start:
+        entry = self.top.get("start")
+        if entry is None:
+            return Start()
+        section = entry.section(("count", "rest_states", "settle"))
+        count, states, settle = (section.get(key) for key in ("count", "rest_states", "settle"))
+        rest_states: tuple[str, ...] = A_LEADS_B
+        if states is not None:
+            if states.is_list:
+                rest_states = tuple(item.choice(A_LEADS_B) for item in states.items())
+            else:
+                states.choice(("any",))
+        return Start(
+            count.integer(-(1 << 63), (1 << 63) - 1) if count else 0,
+            rest_states,
+            settle.integer(0, LONGEST_CLOCKS) if settle else Start().settle,
+        )
+
+    def lines(self) -> tuple[Port, Port, Port | None]:
+        entry = self.top.require("lines", "{a: enc_a, b: enc_b, index: enc_z}")
+        if entry is None:
+            return Port(""), Port(""), None
+        section = entry.section(("a", "b", "index"))
+        a, b, index = section.require("a", "enc_a"), section.require("b", "enc_b"), section.get("index")
+        return _line(a) if a else Port(""), _line(b) if b else Port(""), _line(index) if index else None
+
+    def inputs(self) -> tuple[tuple[Constant, ...], Port | None]:
+        entry = self.top.get("inputs")
+        constants: list[Constant] = []
+        clear: Port | None = None
+        for name, value in entry.pairs("a map of input names and values") if entry else []:
+            section = value.section(("port", "role", "value", "width", "active")) if value.is_map else None
+            role_entry = section.get("role") if section else None
+            role = _choice(role_entry, _ROLES, _LATER_ROLES) if role_entry else "constant"
+            port_entry = section.get("port") if section else None
+            port = port_entry.identifier() if port_entry else name
+            if port_entry is None and not is_identifier(name):
+                value.problem(f"{name!r} is not an HDL name; write {{port: NAME, value: 0}}")
+            if role == "clear-error":
+                if clear is not None:
+                    value.problem("a second clear-error input; one is supported")
+                assert section is not None
+                for key in ("value", "width"):
+                    if extra := section.get(key):
+                        extra.problem("a clear-error input has no constant value; the tool drives it")
+                clear = Port(port, None, _active_low(section))
+                continue
+            if section is None:
+                constants.append(Constant(port, value.integer(0, 1)))
+                continue
+            width_entry, level = section.get("width"), section.require("value", "1")
+            width = width_entry.integer(1, 64) if width_entry else 1
+            if extra := section.get("active"):
+                extra.problem("a constant is driven as it is written; `active` belongs to inputs with another role")
+            constants.append(Constant(port, level.integer(0, (1 << width) - 1) if level else 0, width))
+        return tuple(constants), clear
+
+    def count(self) -> Count | None:
+        entry = self.top.get("count")
+        if entry is None:
+            return None
+        section = entry.section(
+            ("port", "width", "signed", "resolution", "at", "forward", "overflow", "modulo", "lowest", "highest")
+        )
+        port, width_entry = section.require("port", "position"), section.require("width", "16")
+        signed_entry = section.require("signed", "true")
+        resolution = section.get("resolution")
+        forward, at, overflow_entry = section.get("forward"), section.get("at"), section.get("overflow")
+        modulo, lowest, highest = section.get("modulo"), section.get("lowest"), section.get("highest")
+        width = width_entry.integer(2, 64) if width_entry else 16
+        signed = signed_entry is not None and signed_entry.flag()
+        low, high = (-(1 << (width - 1)), (1 << (width - 1)) - 1) if signed else (0, (1 << width) - 1)
+        overflow = overflow_entry.choice(("wrap", "hold", "modulo")) if overflow_entry else "wrap"
+        states_per_count = 4 // int(resolution.choice(("x4", "x2", "x1"))[1]) if resolution else 1
+        if at and states_per_count == 1:
+            at.problem("`at` belongs to resolution x1 or x2; an x4 count moves at every state boundary")
+        if overflow == "modulo":
+            if modulo is None:
+                entry.problem("the key 'modulo' is missing; write for example `modulo: 4000` (counts 0 to 3999)")
+            else:
+                low, high = 0, modulo.integer(2, min(high + 1, 1 << 62)) - 1
+        elif modulo is not None:
+            modulo.problem("`modulo` belongs to `overflow: modulo`")
+        for limit in (lowest, highest):
+            if limit is not None and overflow != "hold":
+                limit.problem("`lowest` and `highest` belong to `overflow: hold`")
+        if overflow == "hold":
+            low, high = lowest.integer(low, high) if lowest else low, highest.integer(low, high) if highest else high
+            if low >= high:
+                entry.problem(f"the range from {low} to {high} holds no two counts")
+        return Count(
+            port.identifier() if port else "",
+            width,
+            signed,
+            states_per_count,
+            at.choice(A_LEADS_B) if at else "00",
+            forward is None or forward.choice(("a-leads-b", "b-leads-a")) == "a-leads-b",
+            overflow,
+            low,
+            high,
+        )
+
+    def direction(self) -> Direction | None:
+        entry = self.top.get("direction")
+        if entry is None:
+            return None
+        section = entry.section(("port", "forward", "valid"))
+        port, forward = section.require("port", "dir"), section.require("forward", "1")
+        valid = section.require("valid", "with-count")
+        return Direction(
+            port.identifier() if port else "",
+            forward.level() if forward else 1,
+            valid is not None and _choice(valid, ("always", "with-count"), _LATER_DIRECTION) == "with-count",
+        )
+
+    def step(self) -> Port | None:
+        entry = self.top.get("step")
+        if entry is None:
+            return None
+        section = entry.section(("port", "kind", "active"))
+        port, kind = section.require("port", "step"), section.require("kind", "pulse")
+        if kind:
+            _choice(kind, ("pulse",), _LATER_STEP)
+        return Port(port.identifier() if port else "", None, _active_low(section))
+
+    def error(self) -> Error | None:
+        entry = self.top.get("error")
+        if entry is None:
+            return None
+        section = entry.section(("port", "kind", "active"))
+        port, kind = section.require("port", "err"), section.require("kind", "pulse")
+        return Error(
+            Port(port.identifier() if port else "", None, _active_low(section)),
+            kind is not None and _choice(kind, ("pulse", "sticky"), _LATER_ERROR) == "sticky",
+        )
+
+    def index(self) -> Index | None:
+        entry = self.top.get("index")
+        if entry is None:
+            return None
+        section = entry.section(("action", "when", "sense"))
+        action, when, sense = section.require("action", "zero"), section.get("when"), section.get("sense")
+        if action:
+            _choice(action, ("zero",), _LATER_INDEX)
+        gate = when.section(("a", "b")) if when else None
+        a, b = (gate.get("a"), gate.get("b")) if gate else (None, None)
+        return Index(
+            a.level() if a else None,
+            b.level() if b else None,
+            sense is not None and sense.choice(("level", "edge")) == "edge",
+        )
+
+    def latency(self) -> Latency:
+        entry = self.top.require("latency", "{count: 3}")
+        if entry is None:
+            none = Span(0, 0)
+            return Latency(none, none, none, none, none, none)
+        section = entry.section(("count", "direction", "step", "error", "index", "clear"))
+        given = {key: _span(value) for key in section.keys if (value := section.get(key))}
+        if not {"count", "step"} & given.keys() and entry.is_map:
+            entry.problem("the key 'count' is missing; write for example `count: 3` (the key 'step' where there is no count)")
+        main = given.get("count", given.get("step", Span(0, 0)))
+        direction, step, error, index = (given.get(key, main) for key in ("direction", "step", "error", "index"))
+        return Latency(main, direction, step, error, index, given.get("clear", Span(1, 1)))
+
+    def filter(self) -> Filter:
+        entry = self.top.get("filter")
+        if entry is None or (not entry.is_map and entry.choice(("none",))):
+            return Filter()
+        section = entry.section(("rejects", "passes", "bursts"))
+        rejects_entry, passes_entry = section.require("rejects", "2"), section.require("passes", "3")
+        bursts = section.get("bursts")
+        rejects = rejects_entry.integer(0, LONGEST_CLOCKS) if rejects_entry else 0
+        passes = passes_entry.integer(1, LONGEST_CLOCKS) if passes_entry else 1
+        if rejects_entry and passes_entry and passes <= rejects:
+            entry.problem(
+                f"a pulse of {passes} clocks cannot always pass while {rejects} never do; `passes` must be above `rejects`"
+            )
+        return Filter(rejects, passes, bursts is not None and bursts.choice(("rejected", "open")) == "open")
+
+
+def read_contract(path: Path) -> Contract:
+    """Read and check a decoder file.
+
+    Raises:
+        InputError: with every problem found, each at its line.
+    """
+    document = load(path, "decoder file")
+    root = document.root
+    for key, value in root.pairs("a map, as every decoder file is"):
+        if key in _LATER_KEYS:
+            value.problem("this key is not supported by this version of tbkit")
+    document.finish()
+    top = root.section(_KEYS)
+    version = top.require("tbkit", str(FORMAT))
+    if version and version.text() != str(FORMAT):
+        version.problem(f"found format {version.text()!r}; this version of tbkit reads format {FORMAT}")
+    reader = _Reader(top, path.parent)
+    constants, clear = reader.inputs()
+    a, b, index_line = reader.lines()
+    illegal, shortest, timers = top.get("illegal"), top.get("shortest_state"), top.get("timers")
+    illegal_count = illegal.section(("count",)).require("count", "hold") if illegal else None
+    contract = Contract(
+        path,
+        reader.design(),
+        reader.clock(),
+        a,
+        b,
+        reader.latency(),
+        index_line,
+        reader.reset(),
+        reader.start(),
+        constants,
+        clear,
+        reader.count(),
+        reader.direction(),
+        reader.step(),
+        reader.error(),
+        illegal_count is None or illegal_count.choice(("hold", "any")) == "hold",
+        reader.index(),
+        reader.filter(),
+        shortest.integer(1, LONGEST_CLOCKS) if shortest else 1,
+        timers is not None and timers.flag(),
+    )
+    _check_together(contract, top)
+    document.finish()
+    return contract
+
+
+def _check_together(contract: Contract, top: Section) -> None:
+    """Meaning that takes more than one key to see."""
+
+    def at(key: str) -> Entry:
+        return top.get(key) or top.entry
+
+    if contract.count is None and contract.step is None:
+        at("direction").problem("a decoder needs a `count` or a `step` output: without one there is nothing to check")
+    if contract.index is not None and contract.index_line is None:
+        at("index").problem("an index action needs the index line; add it as `lines: {index: enc_z}`")
+    if contract.index is not None and contract.count is None:
+        at("index").problem("the index action `zero` needs a `count` output")
+    if contract.clear_error is not None and (contract.error is None or not contract.error.sticky):
+        at("inputs").problem("a clear-error input needs `error: {kind: sticky}`")
+    if contract.count is not None and not contract.count.lowest <= contract.start.count <= contract.count.highest:
+        at("start").problem(
+            f"the start count {contract.start.count} is outside the count's range"
+            f" {contract.count.lowest} to {contract.count.highest}"
+        )
+    _check_ports(contract, at)
+
+
+def _check_ports(contract: Contract, at: object) -> None:
+    """Every port is used once, and a vector port is used by bits only."""
+    assert callable(at)
+    uses: list[tuple[str, str, int | None]] = [("clock", contract.clock.port, None)]
+    for key, port in (
+        ("lines", contract.a),
+        ("lines", contract.b),
+        ("lines", contract.index_line),
+        ("inputs", contract.clear_error),
+    ):
+        if port is not None:
+            uses.append((key, port.name, port.bit))
+    if contract.reset:
+        uses.append(("reset", contract.reset.port.name, None))
+    uses += [("inputs", constant.port, None) for constant in contract.constants]
+    for key, name in (
+        ("count", contract.count.port if contract.count else ""),
+        ("direction", contract.direction.port if contract.direction else ""),
+        ("step", contract.step.name if contract.step else ""),
+        ("error", contract.error.port.name if contract.error else ""),
+    ):
+        if name:
+            uses.append((key, name, None))
+    seen: dict[str, list[int | None]] = {}
+    for key, name, bit in uses:
+        if not name:
+            continue
+        bits = seen.setdefault(name, [])
+        if bits and (bit is None or None in bits or bit in bits):
+            shown = name if bit is None else f"{name}[{bit}]"
+            at(key).problem(f"the port {shown!r} is used twice")
+        bits.append(bit)

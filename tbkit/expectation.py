@@ -1,0 +1,98 @@
+"""What the contract allows for one stimulus, as the line oracle hands it to the scoreboard.
+
+Periods are clock periods (see :mod:`tbkit.stimulus`); an output that changes at clock edge n has its new value from
+period n on, counted so that latency 0 means the same period as the cause.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+import numpy.typing as npt
+
+Int64s = npt.NDArray[np.int64]
+Bools = npt.NDArray[np.bool_]
+
+
+@dataclass(frozen=True, slots=True)
+class Events:
+    """Changes of the filtered lines in order of time, one for each period in which something changed.
+
+    Attributes:
+        period: int64[n], when the lines show it.
+        before, after: int64[n], the state AB as 2·A + B.
+        moved: int64[n], +1, -1 or 0 states in the decoder's forward sense; 0 also for an illegal transition.
+        step: int64[n], by how much the count moves.
+        illegal: bool[n], both lines changed at once.
+        zero: bool[n], the index makes the count 0 here.
+        leaves_index: bool[n], the index stopped making the count 0 here.
+        open: bool[n], the contract leaves open what happens here.
+    """
+
+    period: Int64s
+    before: Int64s
+    after: Int64s
+    moved: Int64s
+    step: Int64s
+    illegal: Bools
+    zero: Bools
+    leaves_index: Bools
+    open: Bools
+
+    def __len__(self) -> int:
+        return len(self.period)
+
+
+@dataclass(frozen=True, slots=True)
+class Epoch:
+    """A stretch in which the contract ties every change to an event.
+
+    Attributes:
+        begin, end: periods; changes after ``begin`` and up to ``end`` are compared.
+        first, last: the events ``first:last`` belong to it.
+        base: the count at ``begin``: ``start`` (the contract's start count), ``carry`` (as the events up to here make it)
+            or ``adopt`` (whatever is seen, within ``spread`` of the start count if given).
+        spread: lowest and highest difference from the start count.
+    """
+
+    begin: int
+    end: int
+    first: int
+    last: int
+    base: str
+    spread: tuple[int, int] | None = None
+
+
+@dataclass(frozen=True, slots=True)
+class Hold:
+    """Levels an output must keep: from period ``begin[i]`` up to before ``end[i]`` it is ``level[i]``.
+
+    ``event[i]`` is the event that brought the level (-1: none did).
+    """
+
+    begin: Int64s
+    end: Int64s
+    level: Int64s
+    event: Int64s
+
+
+@dataclass(frozen=True, slots=True)
+class Expectation:
+    """Everything the line oracle says about a run.
+
+    Attributes:
+        events: what the lines do.
+        epochs: where the count and the step are tied to events.
+        error_epochs: where the error is.
+        direction: levels of a direction output that is always valid.
+        sticky_error: levels of a sticky error.
+        open_periods: clock periods in which the count is not compared.
+    """
+
+    events: Events
+    epochs: tuple[Epoch, ...]
+    error_epochs: tuple[Epoch, ...]
+    direction: Hold | None
+    sticky_error: Hold | None
+    open_periods: int

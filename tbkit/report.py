@@ -1,0 +1,200 @@
+"""What a person, a program and a CI server are told."""
+
+from __future__ import annotations
+
+import json
+import shlex
+import xml.etree.ElementTree as ET  # only written here
+from collections.abc import Sequence
+from dataclasses import asdict
+from pathlib import Path
+
+from rich.console import Console
+from rich.markup import escape
+from rich.text import Text
+
+from tbkit import __version__
+from tbkit.contract import Contract
+from tbkit.findings import KINDS, Finding
+from tbkit.verify import ProfileResult, Results
+
+#: Findings shown in full on a terminal; the JSON holds more.
+SHOWN = 5
+
+CAUTION = (
+    "Simulation at digital level of the RTL, parameters and simulator named above; "
+    "no safety rating, no proof of timing, metastability or wiring."
+)
+
+
+def time_text(time_ps: int) -> str:
+    """A time a person can read, without losing a digit."""
+    for unit, size in (("s", 10**12), ("ms", 10**9), ("us", 10**6), ("ns", 10**3)):
+        if time_ps >= size:
+            whole, rest = divmod(time_ps, size)
+            digits = f"{rest:0{len(str(size)) - 1}d}".rstrip("0")
+            return f"{whole}.{digits} {unit}" if digits else f"{whole} {unit}"
+    return f"{time_ps} ps"
+
+
+def repeat_command(contract: Contract, results: Results, profile: ProfileResult, own_profiles: Sequence[Path]) -> str:
+    """The command that shows one profile's findings again."""
+    words = ["tbkit", "verify", str(contract.file), *(str(path) for path in own_profiles), "--only", profile.name]
+    return shlex.join([*words, "--simulator", results.simulator.name, "--seed", str(profile.seed)])
+
+
+def print_results(console: Console, contract: Contract, results: Results, own_profiles: Sequence[Path]) -> None:
+    """The result a person reads in ten seconds."""
+    console.print(f"[bold]{escape(str(contract.file))}[/] on {results.simulator}, tbkit {__version__}")
+    width = max(len(profile.name) for profile in results.profiles)
+    head = f"  {'profile':{width}} {'edges':>8} {'compared':>9} {'latency':>8}  result"
+    console.print(head, style="dim")
+    for profile in results.profiles:
+        console.print(_row(profile, width))
+    failed = [profile for profile in results.profiles if profile.verdict == "fail"]
+    shown = 0
+    for profile in failed:
+        assert profile.score is not None
+        kinds: set[str] = set()
+        for finding in profile.findings:
+            # The first of each kind says it; the totals say how often.
+            if finding.kind in kinds or shown == SHOWN:
+                continue
+            kinds.add(finding.kind)
+            shown += 1
+            print_finding(console, profile, finding)
+            console.print(f"    again     {repeat_command(contract, results, profile, own_profiles)}", style="cyan")
+    hidden = sum(len(profile.score.totals) for profile in failed if profile.score) - shown
+    if hidden:
+        console.print(f"\n  {hidden} more kinds of finding in these profiles; --json FILE writes them all")
+    _print_verdict(console, results, failed)
+
+
+def _row(profile: ProfileResult, width: int) -> Text:
+    style, word = {
+        "pass": ("green", "pass"),
+        "fail": ("bold red", "FAIL"),
+        "left-out": ("dim", "left out"),
+        "empty": ("bold red", "EMPTY"),
+        "not-run": ("bold red", "NOT RUN"),
+    }[profile.verdict]
+    row = Text(f"  {profile.name:{width}} ")
+    if profile.score is None:
+        row.append(f"{'':>8} {'':>9} {'':>8}  ")
+    else:
+        latency = "" if profile.score.worst_latency is None else f"{profile.score.worst_latency} clk"
+        row.append(f"{profile.edges:>8} {profile.comparisons:>9} {latency:>8}  ")
+    row.append(word, style)
+    if profile.score and profile.score.totals:
+        row.append("  " + ", ".join(f"{kind} ×{many}" for kind, many in profile.score.totals.items()))
+    if profile.reason:
+        row.append(f"  {profile.reason}", "dim")
+    return row
+
+
+def print_finding(console: Console, profile: ProfileResult, finding: Finding) -> None:
+    assert profile.score is not None
+    many = profile.score.totals[finding.kind]
+    often = "once" if many == 1 else f"{many} times, first"
+    console.print()
+    console.print(
+        Text.assemble(
+            ("  " + finding.kind, "bold red"), f" in {profile.name}, {often} at {time_text(finding.time_ps)}: {KINDS[finding.kind]}"
+        )
+    )
+    console.print(f"    output    {finding.output}: expected {finding.expected}, found {finding.found}")
+    console.print(f"    A B       {finding.states}", markup=False)
+
+
+def _print_verdict(console: Console, results: Results, failed: Sequence[ProfileResult]) -> None:
+    ran = [profile for profile in results.profiles if profile.verdict in ("pass", "fail", "empty")]
+    edges, compared = sum(profile.edges for profile in ran), sum(profile.comparisons for profile in ran)
+    console.print()
+    if results.failure:
+        console.print(Text(str(results.failure), "red"))
+        console.print()
+    match results.verdict:
+        case "pass":
+            text = Text.assemble(
+                ("PASS", "bold green"), f"  {len(ran)} profiles, {edges} edges, {compared} comparisons, no finding"
+            )
+        case "fail":
+            text = Text.assemble(("FAIL", "bold red"), f"  {len(failed)} of {len(ran)} profiles found the decoder wrong")
+        case _:
+            text = Text.assemble(("ERROR", "bold red"), "  no verdict: nothing was compared, or the simulator failed")
+    console.print(text)
+    open_clocks = sum(profile.score.open_clocks for profile in ran if profile.score)
+    clocks = sum(profile.clocks for profile in ran)
+    if clocks:
+        console.print(
+            f"{100 * (1 - open_clocks / clocks):.1f} % of {clocks} clocks compared; the contract leaves the rest open", style="dim"
+        )
+    if not results.simulator.four_state:
+        console.print(
+            f"{results.simulator.name} has two-state logic: an output that would be X for ever cannot be seen here", style="dim"
+        )
+    console.print(CAUTION, style="dim")
+
+
+def as_json(contract: Contract, seed: int, results: Sequence[Results]) -> str:
+    """The results as JSON: one object, or a list of them for several simulators."""
+    objects = [
+        {
+            "tbkit": __version__,
+            "verdict": one.verdict,
+            "decoder": str(contract.file),
+            "simulator": str(one.simulator),
+            "seed": seed,
+            "failure": str(one.failure) if one.failure else None,
+            "profiles": [
+                {
+                    "name": profile.name,
+                    "verdict": profile.verdict,
+                    "reason": profile.reason,
+                    "seed": profile.seed,
+                    "edges": profile.edges,
+                    "clocks": profile.clocks,
+                    "comparisons": profile.comparisons,
+                    "worst_latency": profile.score.worst_latency if profile.score else None,
+                    "open_clocks": profile.score.open_clocks if profile.score else None,
+                    "totals": profile.score.totals if profile.score else {},
+                    "findings": [asdict(finding) for finding in profile.findings],
+                }
+                for profile in one.profiles
+            ],
+        }
+        for one in results
+    ]
+    return json.dumps(objects[0] if len(objects) == 1 else objects, indent=2) + "\n"
+
+
+def as_junit(contract: Contract, results: Sequence[Results]) -> str:
+    """The results as JUnit XML: a suite for each simulator, a case for each profile."""
+    root = ET.Element("testsuites", name="tbkit")
+    for one in results:
+        verdicts = [profile.verdict for profile in one.profiles]
+        suite = ET.SubElement(
+            root,
+            "testsuite",
+            name=f"{contract.file} on {one.simulator}",
+            tests=str(len(verdicts)),
+            failures=str(verdicts.count("fail")),
+            errors=str(verdicts.count("empty") + verdicts.count("not-run")),
+            skipped=str(verdicts.count("left-out")),
+        )
+        for profile in one.profiles:
+            case = ET.SubElement(suite, "testcase", classname=f"{contract.file.stem}.{one.simulator.name}", name=profile.name)
+            if profile.verdict == "fail":
+                assert profile.score is not None
+                totals = ", ".join(f"{kind} x{many}" for kind, many in profile.score.totals.items())
+                node = ET.SubElement(case, "failure", type=profile.findings[0].kind, message=totals)
+                node.text = "\n".join(
+                    f"{f.kind} at {time_text(f.time_ps)}: {f.output}: expected {f.expected}, found {f.found} ({f.states})"
+                    for f in profile.findings
+                )
+            elif profile.verdict in ("empty", "not-run"):
+                ET.SubElement(case, "error", type=profile.verdict, message=profile.reason).text = str(one.failure or "")
+            elif profile.verdict == "left-out":
+                ET.SubElement(case, "skipped", message=profile.reason)
+    ET.indent(root)
+    return ET.tostring(root, "unicode", xml_declaration=True) + "\n"

@@ -1,0 +1,139 @@
+"""The shaft oracle: at every rest the count is where the shaft truly is, whatever the lines did on the way.
+
+It knows nothing of sampling, filtering or latency and shares no code with the line oracle. It is silent once the lines
+stop telling where the shaft is, until a reset at rest or the index gives a new origin.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from math import floor
+
+import numpy as np
+
+from tbkit.contract import A_LEADS_B, Contract, Count
+from tbkit.motion import Int64s
+from tbkit.stimulus import Stimulus
+
+
+@dataclass(frozen=True, slots=True)
+class Rests:
+    """At the end of clock period ``period[i]`` all lines have been still for long and the count is ``count[i]``."""
+
+    period: Int64s
+    count: Int64s
+
+
+def _counted(count: Count, place: Int64s) -> Int64s:
+    """The ideal count at each shaft position (whole states), up to a constant."""
+    forward = place if count.a_leads_forward else -place
+    if count.states_per_count == 1:
+        return forward
+    order = list(A_LEADS_B) if count.a_leads_forward else [A_LEADS_B[0], *reversed(A_LEADS_B[1:])]
+    return (forward - order.index(count.at)) // count.states_per_count
+
+
+def _gated(contract: Contract, stimulus: Stimulus, place: Int64s) -> Int64s:
+    """1 where the index zeroes the count at that position, 0 where it does not, -1 where it depends on the instant."""
+    window, index = stimulus.ideal.window, contract.index
+    if window is None or index is None:
+        return np.zeros(len(place), dtype=np.int64)
+    whole = window.begin.denominator == window.end.denominator == 1
+    into = (place - floor(window.begin)) % window.every
+    width = (window.end.__ceil__()) - floor(window.begin)
+    inside = into < width
+    states = np.array([[int(level) for level in state] for state in A_LEADS_B])[place % 4]
+    if index.a is not None:
+        inside &= states[:, 0] == index.a
+    if index.b is not None:
+        inside &= states[:, 1] == index.b
+    return inside.astype(np.int64) * (1 if whole else -1)
+
+
+def rests(contract: Contract, stimulus: Stimulus, doubtful_ps: Int64s) -> Rests:
+    """Every rest at which the shaft tells the count; ``doubtful_ps``: when an illegal transition was meant to happen."""
+    none = np.zeros(0, dtype=np.int64)
+    count = contract.count
+    if count is None:
+        return Rests(none, none)
+    period_ps = stimulus.period_ps
+    ledger = stimulus.ideal.ledger
+    first = floor(stimulus.ideal.first_states)
+    place = np.concatenate([[first], np.where(ledger.up, ledger.number, ledger.number - 1)])
+    since_ps = np.concatenate([[0], ledger.time_ps])
+    counted, gated = _counted(count, place), _gated(contract, stimulus, place)
+    if contract.index is not None and contract.index.edge:
+        gated = np.where((gated == 1) & (np.concatenate([[0], gated[:-1]]) == 1), 0, gated)
+
+    quiet_ps = contract.settle_clocks * period_ps
+    moves = np.unique(np.concatenate([line.toggles_ps for line in (*stimulus.lines.values(), *stimulus.drives.values())]))
+    ends = np.append(moves[1:], stimulus.periods * period_ps)
+    still = ends - moves > quiet_ps + period_ps
+    check_ps = ends[still] // period_ps * period_ps - 1
+
+    # A disturbance may go on disturbing, so what is lost to one is lost for good.
+    good = check_ps < (stimulus.lost_ps if stimulus.lost_ps is not None else np.iinfo(np.int64).max)
+    origins = _origins(contract, stimulus, since_ps, counted, gated, quiet_ps)
+    origins += [_Origin(int(time), None, 0) for time in doubtful_ps]
+    origins.sort(key=lambda origin: origin.time_ps)
+    times = np.array([origin.time_ps for origin in origins], dtype=np.int64)
+    found: list[tuple[int, int]] = []
+    for at_ps in check_ps[good].tolist():
+        turn = int(np.searchsorted(times, at_ps, side="right")) - 1
+        if turn < 0:
+            continue
+        origin_ps, value, ideal = origins[turn].time_ps, origins[turn].count, origins[turn].ideal
+        if value is None:
+            continue
+        begin, end = np.searchsorted(since_ps, [origin_ps, at_ps], side="right").tolist()
+        if count.overflow == "hold":
+            path = value + counted[begin - 1 : end] - ideal
+            if path.min() < count.lowest or path.max() > count.highest:
+                continue
+        here = value + int(counted[end - 1]) - ideal
+        here = (here - count.lowest) % count.size + count.lowest
+        found.append((at_ps // period_ps, here - (1 << 64) if here >= 1 << 63 else here))
+    table = np.array(found, dtype=np.int64).reshape(-1, 2)
+    return Rests(table[:, 0], table[:, 1])
+
+
+@dataclass(frozen=True, slots=True)
+class _Origin:
+    """From ``time_ps`` on the count is ``count`` where the ideal count is ``ideal``; None: not known from outside."""
+
+    time_ps: int
+    count: int | None
+    ideal: int
+
+
+def _origins(
+    contract: Contract, stimulus: Stimulus, since_ps: Int64s, counted: Int64s, gated: Int64s, quiet_ps: int
+) -> list[_Origin]:
+    origins: list[_Origin] = []
+    asserted, releases = _resets(stimulus) if contract.reset else ([], [0] if stimulus.power_up else [])
+    origins += [_Origin(time, None, 0) for time in asserted]
+    moves = np.concatenate([stimulus.lines["a"].toggles_ps, stimulus.lines["b"].toggles_ps])
+    for time in releases:
+        near = bool(((moves > time - quiet_ps) & (moves < time + quiet_ps)).any())
+        at = int(np.searchsorted(since_ps, time, side="right")) - 1
+        # The state is read from the shaft; if the lines lie, the run is lost anyway.
+        state = A_LEADS_B[int(_place(stimulus, at)) % 4]
+        known = not near and state in contract.start.rest_states
+        origins.append(_Origin(time, contract.start.count if known else None, int(counted[at])))
+    for at in np.flatnonzero(gated).tolist():
+        origins.append(_Origin(int(since_ps[at]), 0 if gated[at] == 1 else None, int(counted[at])))
+    return origins
+
+
+def _resets(stimulus: Stimulus) -> tuple[list[int], list[int]]:
+    """When reset is asserted, and when it is released."""
+    line = stimulus.drives["reset"]
+    toggles = line.toggles_ps.tolist()
+    return toggles[line.first :: 2], toggles[1 - line.first :: 2]
+
+
+def _place(stimulus: Stimulus, at: int) -> int:
+    if at == 0:
+        return floor(stimulus.ideal.first_states)
+    ledger = stimulus.ideal.ledger
+    return int(ledger.number[at - 1]) - (0 if ledger.up[at - 1] else 1)

@@ -1,0 +1,187 @@
+"""Quantities: text with a unit, kept exact, and turned into ps and states in one place.
+
+A quantity stays a fraction until :class:`Scale` resolves it, because several units (``dwell``, ``clocks``, ``rev``) mean
+nothing before a decoder and an encoder are known. Times come out as whole picoseconds, distances as states.
+"""
+
+from __future__ import annotations
+
+import re
+from dataclasses import dataclass
+from fractions import Fraction
+from math import ceil
+from typing import TYPE_CHECKING
+
+from tbkit.errors import UnfitError
+
+if TYPE_CHECKING:
+    from tbkit.contract import Contract
+
+PS_PER_S = 10**12
+
+_TIME_PS = {"s": PS_PER_S, "ms": 10**9, "us": 10**6, "ns": 10**3, "ps": 1}
+_DECODER_TIMES = ("clocks", "dwell", "shortest", "reject", "pass", "settle")
+_DISTANCES = ("states", "cycles", "rev", "deg", "overflow", "underflow")
+_RATES_HZ = {"Hz": 1, "kHz": 10**3, "MHz": 10**6, "GHz": 10**9}
+_SINGULAR = {"clock": "clocks", "state": "states", "cycle": "cycles"}
+
+#: What to write for each kind of quantity; quoted in messages.
+UNITS = {
+    "time": ", ".join((*_TIME_PS, *_DECODER_TIMES)),
+    "distance": ", ".join(_DISTANCES),
+    "speed": "rpm, rev/s, deg/s, Hz (cycles per second), or any distance/time such as states/dwell",
+    "acceleration": "rev/s2, deg/s2, or any distance/time2 such as states/ms2",
+    "angle": "deg (electrical degrees)",
+    "rate": ", ".join(_RATES_HZ),
+}
+
+_QUANTITY = re.compile(r"\s*([+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d{1,3})?)\s*(.*?)\s*")
+
+
+@dataclass(frozen=True, slots=True)
+class Quantity:
+    """A number with a unit: ``value`` times ``distance`` per ``time`` to the power ``power``; unused parts are ``""``."""
+
+    value: Fraction
+    distance: str
+    time: str
+    power: int
+
+    def __str__(self) -> str:
+        number = str(self.value) if self.value.denominator == 1 else f"{float(self.value):g}"
+        per = self.time if self.power < 2 else f"{self.time}2"
+        return f"{number} {'/'.join(part for part in (self.distance, per) if part)}"
+
+
+def number_and_unit(text: str) -> tuple[Fraction, str] | None:
+    """Split ``"1.5 us"`` into its exact number and its unit (``""`` if there is none); None if it is no number."""
+    match = _QUANTITY.fullmatch(text)
+    if match is None:
+        return None
+    return Fraction(match.group(1)), match.group(2)
+
+
+def parse(text: str, kind: str) -> Quantity:
+    """Read ``text`` as a quantity of ``kind``, one of the keys of :data:`UNITS`.
+
+    Raises:
+        ValueError: what stood there and which units fit.
+    """
+    split = number_and_unit(text)
+    if split is None:
+        msg = f"{text!r} is not a number with a unit; units for a {kind}: {UNITS[kind]}"
+        raise ValueError(msg)
+    value, unit = split
+    if not unit:
+        msg = f"{text!r} needs a unit; units for a {kind}: {UNITS[kind]}"
+        raise ValueError(msg)
+    quantity = _with_unit(value, unit, kind)
+    if quantity is None:
+        msg = f"{unit!r} in {text!r} is not a unit for a {kind}; units that fit: {UNITS[kind]}"
+        raise ValueError(msg)
+    return quantity
+
+
+def _with_unit(value: Fraction, unit: str, kind: str) -> Quantity | None:
+    if kind == "time":
+        name = _SINGULAR.get(unit, unit)
+        return Quantity(value, "", name, 1) if name in _TIME_PS or name in _DECODER_TIMES else None
+    if kind == "distance":
+        name = _SINGULAR.get(unit, unit)
+        return Quantity(value, name, "", 0) if name in _DISTANCES else None
+    if kind == "angle":
+        return Quantity(value, "deg", "", 0) if unit == "deg" else None
+    if kind == "rate":
+        return Quantity(value * _RATES_HZ[unit], "", "s", 1) if unit in _RATES_HZ else None
+    if kind == "speed" and unit == "rpm":
+        return Quantity(value / 60, "rev", "s", 1)
+    if kind == "speed" and unit in _RATES_HZ:
+        return Quantity(value * _RATES_HZ[unit], "cycles", "s", 1)
+    distance, slash, time = unit.partition("/")
+    power = 1 if kind == "speed" else 2
+    if power == 2:
+        if not time.endswith("2"):
+            return None
+        time = time[:-1].removesuffix("^")
+    distance, time = _SINGULAR.get(distance, distance), _SINGULAR.get(time, time)
+    if time == "min":
+        value, time = value / 60**power, "s"
+    if not slash or distance not in _DISTANCES or not (time in _TIME_PS or time in _DECODER_TIMES):
+        return None
+    return Quantity(value, distance, time, power)
+
+
+@dataclass(frozen=True, slots=True)
+class Scale:
+    """What the decoder's and the encoder's own units mean for one contract and one encoder.
+
+    Attributes:
+        period_ps: clock period.
+        clocks: length of each decoder unit of time, in clocks.
+        states: length of each distance unit, in states (no entry: the unit has no meaning here).
+    """
+
+    period_ps: int
+    clocks: dict[str, int]
+    states: dict[str, Fraction]
+
+    @classmethod
+    def of(cls, contract: Contract, lines: int | None) -> Scale:
+        """Build the scale for a decoder and an encoder with ``lines`` cycles a revolution (None: not stated)."""
+        filtering, count = contract.filter, contract.count
+        clocks = {
+            "clocks": 1,
+            # Any single pulse of this length must be followed, so reversals at this speed are legal too.
+            "dwell": max(contract.shortest_state, filtering.passes),
+            # Straight running holds each line for two states, so a filter only has to pass two of them.
+            "shortest": max(contract.shortest_state, ceil(filtering.passes / 2)),
+            "reject": filtering.rejects,
+            "pass": filtering.passes,
+            "settle": contract.settle_clocks,
+        }
+        states: dict[str, Fraction] = {"states": Fraction(1), "cycles": Fraction(4)}
+        if lines is not None:
+            states["rev"] = Fraction(4 * lines)
+            states["deg"] = Fraction(4 * lines, 360)
+        if count is not None:
+            states["overflow"] = Fraction((count.highest - contract.start.count + 1) * count.states_per_count)
+            states["underflow"] = Fraction((contract.start.count - count.lowest + 1) * count.states_per_count)
+        return cls(contract.clock.period_ps, clocks, states)
+
+    def _unit_ps(self, unit: str) -> Fraction:
+        if unit in _TIME_PS:
+            return Fraction(_TIME_PS[unit])
+        return Fraction(self.clocks[unit] * self.period_ps)
+
+    def _unit_states(self, unit: str) -> Fraction:
+        if unit not in self.states:
+            if unit in ("rev", "deg"):
+                msg = f"the unit {unit!r} needs the encoder's line count: add `encoder: {{lines: 1024}}` to the profile"
+            else:
+                msg = f"the unit {unit!r} needs a decoder with a count output"
+            raise UnfitError(msg)
+        return self.states[unit]
+
+    def time_ps(self, quantity: Quantity) -> int:
+        """Length of a time in ps, rounded once, half to even."""
+        return round(quantity.value * self._unit_ps(quantity.time))
+
+    def distance_states(self, quantity: Quantity) -> Fraction:
+        """Length of a distance in states, exact.
+
+        Raises:
+            UnfitError: the unit has no meaning for this decoder and encoder.
+        """
+        return quantity.value * self._unit_states(quantity.distance)
+
+    def per_time(self, quantity: Quantity) -> Fraction:
+        """A speed in states/ps or an acceleration in states/ps², exact.
+
+        Raises:
+            UnfitError: the unit has no meaning for this decoder and encoder, or its time is zero clocks long.
+        """
+        time = self._unit_ps(quantity.time)
+        if time == 0:
+            msg = f"{quantity}: one {quantity.time!r} is 0 clocks for this decoder"
+            raise UnfitError(msg)
+        return quantity.value * self._unit_states(quantity.distance) / time**quantity.power

@@ -1,0 +1,135 @@
+"""Verifies one decoder: every stage from profiles to results, in order."""
+
+from __future__ import annotations
+
+import shutil
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass
+from pathlib import Path
+
+import numpy as np
+
+from tbkit import bench, regression
+from tbkit.contract import Contract
+from tbkit.errors import SimulatorError, UnfitError
+from tbkit.findings import Finding, Score
+from tbkit.lineoracle import expect
+from tbkit.profile import Profile
+from tbkit.scoreboard import judge
+from tbkit.shaftoracle import rests
+from tbkit.simulators import Simulator
+from tbkit.stimulus import MOST_PERIODS, Stimulus, compile_stimulus
+from tbkit.trace import read_trace
+
+
+@dataclass(frozen=True, slots=True)
+class ProfileResult:
+    """The result of one profile.
+
+    ``verdict``: ``pass``, ``fail``, ``left-out`` (``reason`` says why), ``empty`` (it compared nothing) or ``not-run`` (the
+    simulator failed first).
+    """
+
+    name: str
+    verdict: str
+    seed: int
+    edges: int = 0
+    clocks: int = 0
+    score: Score | None = None
+    reason: str = ""
+
+    @property
+    def findings(self) -> tuple[Finding, ...]:
+        return self.score.findings if self.score else ()
+
+    @property
+    def comparisons(self) -> int:
+        return self.score.comparisons if self.score else 0
+
+
+@dataclass(frozen=True, slots=True)
+class Results:
+    """The result of one decoder on one simulator; ``failure`` is the simulator's, if it failed."""
+
+    simulator: Simulator
+    profiles: tuple[ProfileResult, ...]
+    failure: SimulatorError | None
+
+    @property
+    def verdict(self) -> str:
+        """``fail`` beats ``error`` beats ``pass``: a fault that was seen is a fault, whatever else went wrong."""
+        verdicts = {profile.verdict for profile in self.profiles}
+        if "fail" in verdicts:
+            return "fail"
+        if self.failure or "empty" in verdicts or "pass" not in verdicts:
+            return "error"
+        return "pass"
+
+
+@dataclass(frozen=True, slots=True)
+class Plan:
+    """What will be played: the stimuli, and the profiles that are left out with the reason."""
+
+    stimuli: tuple[Stimulus, ...]
+    left_out: tuple[ProfileResult, ...]
+
+
+def plan(contract: Contract, profiles: Sequence[Profile], seed: int) -> Plan:
+    """Compile every profile for the decoder; those it cannot take are left out."""
+    stimuli: list[Stimulus] = []
+    left_out: list[ProfileResult] = []
+    for profile in profiles:
+        builtin = profile.file.parent.name == regression.__name__.rpartition(".")[2]
+        try:
+            stimuli.append(compile_stimulus(profile, contract, seed, regression.MOST_PERIODS if builtin else MOST_PERIODS))
+        except UnfitError as reason:
+            left_out.append(ProfileResult(profile.name, "left-out", seed, reason=str(reason)))
+    return Plan(tuple(stimuli), tuple(left_out))
+
+
+def score(contract: Contract, stimulus: Stimulus, trace_file: Path) -> Score:
+    """Hold one trace against both oracles."""
+    expectation = expect(contract, stimulus)
+    events = expectation.events
+    doubtful = events.period[events.illegal | events.open] * stimulus.period_ps
+    trace = read_trace(trace_file, contract, stimulus.period_ps, stimulus.periods)
+    return judge(contract, stimulus, expectation, rests(contract, stimulus, doubtful.astype(np.int64)), trace)
+
+
+def verify(contract: Contract, planned: Plan, simulator: Simulator, out: Path, progress: Callable[[str], None]) -> Results:
+    """Play a plan on one simulator and judge it.
+
+    Raises:
+        SimulatorError: the decoder would not build.
+    """
+    progress(f"building for {simulator}")
+    ready = bench.build(contract, simulator, out)
+    folder = out / "run" / f"{contract.file.stem}-{simulator.name}"
+    shutil.rmtree(folder, ignore_errors=True)
+    many = len(planned.stimuli)
+    played = bench.play(
+        ready, contract, planned.stimuli, folder, lambda done: progress(f"{done} of {many} profiles played on {simulator}")
+    )
+    results: list[ProfileResult] = []
+    failure = played.failure
+    for n, stimulus in enumerate(planned.stimuli):
+        progress(f"{n} of {many} profiles judged")
+        common = (stimulus.seed, stimulus.edges, stimulus.periods)
+        if n not in played.traces:
+            reason = "the simulator failed before its end"
+            results.append(ProfileResult(stimulus.name, "not-run", *common, reason=reason))
+            continue
+        try:
+            result = score(contract, stimulus, played.traces[n])
+        except SimulatorError as error:
+            failure = failure or error
+            results.append(ProfileResult(stimulus.name, "not-run", *common, reason=str(error)))
+            continue
+        if result.findings:
+            verdict, reason = "fail", ""
+        elif result.comparisons == 0:
+            verdict, reason = "empty", "nothing was compared: the contract leaves everything open that this profile does"
+        else:
+            verdict, reason = "pass", ""
+        results.append(ProfileResult(stimulus.name, verdict, *common, score=result, reason=reason))
+    return Results(simulator, (*results, *planned.left_out), failure)

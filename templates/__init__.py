@@ -1,0 +1,1 @@
+"""Everything Jinja renders; shipped inside the wheel as ``tbkit.templates``."""
