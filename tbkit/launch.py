@@ -15,6 +15,7 @@ from pathlib import Path
 from typing import Any
 
 import cocotb_tools.config
+import find_libpython
 from cocotb_tools.runner import get_runner
 
 # Coroutines carry the bench's delays; gcc has them behind a flag of their own.
@@ -61,6 +62,13 @@ def build_verilator(request: dict[str, Any]) -> None:
         for path in kept.iterdir():
             shutil.copy(path, folder)
     _call(["make", "-s", "-j", str(os.cpu_count() or 1), "-C", str(folder), "-f", "Vtop.mk", "PYTHON3=python3"])
+    _keep(folder, kept)
+    for path in [*folder.glob("V*"), *folder.glob("verilat*")]:
+        path.unlink()  # only the program is needed to run
+
+
+def _keep(folder: Path, kept: Path) -> None:
+    """Put the run-time library's objects aside for the next build."""
     if not kept.is_dir():
         fresh = kept.with_name(f"{kept.name}.{os.getpid()}")
         fresh.mkdir(parents=True)
@@ -80,6 +88,8 @@ def _call(command: list[str]) -> None:
 
 
 def play(request: dict[str, Any]) -> None:
+    if find_libpython.find_libpython() is None:
+        sys.exit("Python's shared library was not found, and cocotb needs it; on Debian and Ubuntu: apt-get install python3-dev")
     folder = Path(request["job_folder"])
     get_runner(request["simulator"]).test(
         test_module="tbkit.insim.player",

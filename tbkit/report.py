@@ -5,6 +5,7 @@ from __future__ import annotations
 import json
 import shlex
 import xml.etree.ElementTree as ET  # only written here
+from collections import Counter
 from collections.abc import Sequence
 from dataclasses import asdict
 from pathlib import Path
@@ -15,10 +16,10 @@ from rich.text import Text
 
 from tbkit import __version__
 from tbkit.contract import Contract
-from tbkit.findings import KINDS, Finding
+from tbkit.findings import KINDS
 from tbkit.verify import ProfileResult, Results
 
-#: Findings shown in full on a terminal; the JSON holds more.
+#: Kinds of finding shown in full on a terminal; the JSON holds more.
 SHOWN = 5
 
 CAUTION = (
@@ -50,23 +51,20 @@ def print_results(console: Console, contract: Contract, results: Results, own_pr
     head = f"  {'profile':{width}} {'edges':>8} {'compared':>9} {'latency':>8}  result"
     console.print(head, style="dim")
     for profile in results.profiles:
-        console.print(_row(profile, width))
+        if profile.verdict != "left-out":
+            console.print(_row(profile, width))
+    reasons: dict[str, list[str]] = {}
+    for profile in results.profiles:
+        if profile.verdict == "left-out":
+            reasons.setdefault(profile.reason, []).append(profile.name)
+    for reason, names in reasons.items():
+        console.print(f"  left out, {reason}: {', '.join(names)}", style="dim")
     failed = [profile for profile in results.profiles if profile.verdict == "fail"]
-    shown = 0
-    for profile in failed:
-        assert profile.score is not None
-        kinds: set[str] = set()
-        for finding in profile.findings:
-            # The first of each kind says it; the totals say how often.
-            if finding.kind in kinds or shown == SHOWN:
-                continue
-            kinds.add(finding.kind)
-            shown += 1
-            print_finding(console, profile, finding)
-            console.print(f"    again     {repeat_command(contract, results, profile, own_profiles)}", style="cyan")
-    hidden = sum(len(profile.score.totals) for profile in failed if profile.score) - shown
-    if hidden:
-        console.print(f"\n  {hidden} more kinds of finding in these profiles; --json FILE writes them all")
+    kinds = Counter(kind for profile in failed if profile.score for kind in profile.score.totals)
+    for kind in list(kinds)[:SHOWN]:
+        _print_kind(console, contract, results, kind, own_profiles)
+    if len(kinds) > SHOWN:
+        console.print(f"\n  also found: {', '.join(list(kinds)[SHOWN:])}; --json FILE writes every finding")
     _print_verdict(console, results, failed)
 
 
@@ -74,7 +72,6 @@ def _row(profile: ProfileResult, width: int) -> Text:
     style, word = {
         "pass": ("green", "pass"),
         "fail": ("bold red", "FAIL"),
-        "left-out": ("dim", "left out"),
         "empty": ("bold red", "EMPTY"),
         "not-run": ("bold red", "NOT RUN"),
     }[profile.verdict]
@@ -92,18 +89,23 @@ def _row(profile: ProfileResult, width: int) -> Text:
     return row
 
 
-def print_finding(console: Console, profile: ProfileResult, finding: Finding) -> None:
-    assert profile.score is not None
-    many = profile.score.totals[finding.kind]
-    often = "once" if many == 1 else f"{many} times, first"
+def _print_kind(console: Console, contract: Contract, results: Results, kind: str, own_profiles: Sequence[Path]) -> None:
+    """One kind of finding, by its first in the shortest profile that shows it."""
+    showing = [profile for profile in results.profiles if profile.score and kind in profile.score.totals]
+    profile = min(showing, key=lambda one: one.edges)
+    finding = next(one for one in profile.findings if one.kind == kind)
+    total = sum(one.score.totals[kind] for one in showing if one.score)
     console.print()
-    console.print(
-        Text.assemble(
-            ("  " + finding.kind, "bold red"), f" in {profile.name}, {often} at {time_text(finding.time_ps)}: {KINDS[finding.kind]}"
-        )
-    )
-    console.print(f"    output    {finding.output}: expected {finding.expected}, found {finding.found}")
-    console.print(f"    A B       {finding.states}", markup=False)
+    console.print(Text.assemble((f"  {kind}", "bold red"), f"  {KINDS[kind]}"))
+    console.print(f"    seen      {_times(total)} in {', '.join(one.name for one in showing)}")
+    console.print(f"    first     in {profile.name} at {time_text(finding.time_ps)}")
+    console.print(f"    lines AB  {finding.states}", markup=False)
+    console.print(f"    {finding.output:9} expected {finding.expected}, found {finding.found}", markup=False)
+    console.print(f"    again     {repeat_command(contract, results, profile, own_profiles)}", style="cyan")
+
+
+def _times(many: int) -> str:
+    return "once" if many == 1 else f"{many} times"
 
 
 def _print_verdict(console: Console, results: Results, failed: Sequence[ProfileResult]) -> None:

@@ -197,18 +197,18 @@ def _too_long(periods: int, most: int) -> UnfitError:
 
 def _check_needs(profile: Profile, contract: Contract) -> None:
     has = {
-        "count": contract.count is not None,
-        "direction": contract.direction is not None,
-        "step": contract.step is not None,
-        "error": contract.error is not None,
-        "sticky-error": contract.error is not None and contract.error.sticky,
-        "clear-error": contract.clear_error is not None,
-        "index": contract.index is not None,
-        "reset": contract.reset is not None,
-        "no-reset": contract.reset is None,
-        "filter": contract.filter.rejects > 0,
+        "count": ("a count", contract.count is not None),
+        "direction": ("a direction", contract.direction is not None),
+        "step": ("a step", contract.step is not None),
+        "error": ("an error", contract.error is not None),
+        "sticky-error": ("a sticky error", contract.error is not None and contract.error.sticky),
+        "clear-error": ("a clear-error input", contract.clear_error is not None),
+        "index": ("an index action", contract.index is not None),
+        "reset": ("a reset", contract.reset is not None),
+        "no-reset": ("no reset", contract.reset is None),
+        "filter": ("a filter", contract.filter.rejects > 0),
     }
-    missing = [need for need in profile.needs if not has[need]]
+    missing = [has[need][0] for need in profile.needs if not has[need][1]]
     if missing:
-        msg = f"it is for decoders with {', '.join(missing)}" if missing != ["no-reset"] else "it is for decoders without reset"
+        msg = f"for decoders with {' and '.join(missing)}"
         raise UnfitError(msg)
