@@ -3,10 +3,11 @@
 from __future__ import annotations
 
 import re
-from collections.abc import Sequence
+from collections.abc import Callable
 from dataclasses import dataclass
 from fractions import Fraction
 from pathlib import Path
+from typing import TypeVar
 
 from tbkit import units
 from tbkit.contract import (
@@ -26,7 +27,9 @@ from tbkit.contract import (
     Span,
     Start,
 )
-from tbkit.yamltree import Entry, Section, is_identifier, load, nearest, one_of
+from tbkit.yamltree import Entry, Section, identifier_fault, load, one_of, quoted, whole_number
+
+T = TypeVar("T")
 
 FORMAT = 1
 LONGEST_CLOCKS = 1_000_000
@@ -47,24 +50,9 @@ _LATER_INDEX = ("load", "latch", "pulse")
 _LATER_DIRECTION = ("with-step",)
 
 
-def _choice(entry: Entry, allowed: Sequence[str], later: Sequence[str] = ()) -> str:
-    """One of ``allowed``; a word of ``later`` is refused as not acted on yet."""
-
-    def read(text: str) -> str:
-        if text in later:
-            msg = f"{text!r} is not supported by this version of tbkit; supported: {one_of(allowed)}"
-            raise ValueError(msg)
-        if text in allowed:
-            return text
-        msg = f"found {text!r}, expected {one_of(allowed)}{nearest(text, allowed)}"
-        raise ValueError(msg)
-
-    return entry.convert(read, allowed[0])
-
-
-def _active_low(section: Section, default: bool = False) -> bool:
+def _active_low(section: Section) -> bool:
     entry = section.get("active")
-    return default if entry is None else entry.choice(("high", "low")) == "low"
+    return entry is not None and entry.choice(("high", "low")) == "low"
 
 
 def _bit(entry: Entry) -> Port:
@@ -72,9 +60,11 @@ def _bit(entry: Entry) -> Port:
 
     def read(text: str) -> Port:
         match = re.fullmatch(r"([^\[\]]+)(?:\[(\d{1,3})\])?", text)
-        if match is None or not is_identifier(match.group(1)):
-            msg = f"found {text!r}, expected a port such as enc_a, or one bit of a vector such as ab[0]"
+        if match is None:
+            msg = f'found {quoted(text)}, expected a port such as enc_a, or one bit of a vector such as "ab[0]"'
             raise ValueError(msg)
+        if fault := identifier_fault(match.group(1)):
+            raise ValueError(fault)
         return Port(match.group(1), None if match.group(2) is None else int(match.group(2)))
 
     return entry.convert(read, Port(""))
@@ -95,12 +85,33 @@ def _span(entry: Entry) -> Span:
         return Span(clocks, clocks)
     items = entry.items()
     if len(items) != 2:
-        entry.problem(f"found {len(items)} numbers, expected a number of clocks or [least, most]")
+        if items:
+            entry.problem(f"found a list of {len(items)}, expected a number of clocks or [least, most]")
         return Span(0, 0)
     least, most = (item.integer(0, LONGEST_CLOCKS) for item in items)
-    if least > most:
+    if least > most and entry.sound:
         entry.problem(f"the range [{least}, {most}] runs backwards; write [{most}, {least}]")
     return Span(least, most)
+
+
+def _as_path(read: Callable[[str], T]) -> Callable[[str], T]:
+    """``read`` for paths: what the file system cannot even look for is told like every other problem."""
+
+    def checked(text: str) -> T:
+        # A surrogate or a control character: no file name that could be shown, or written into a list of files.
+        if not text.isprintable():
+            msg = f"found {quoted(text)}, expected a path of printable characters"
+            raise ValueError(msg)
+        try:
+            return read(text)
+        except OSError as error:
+            msg = f"{quoted(text)} cannot be looked for: {error.strerror}"
+            raise ValueError(msg) from error
+        except NotImplementedError as error:
+            msg = f"{quoted(text)} cannot be looked for: {error}"
+            raise ValueError(msg) from error
+
+    return checked
 
 
 @dataclass(slots=True)
@@ -129,45 +140,58 @@ class _Reader:
         )
 
     def _sources(self, entry: Entry) -> list[Path]:
-        text = entry.text()
-        if not text:
-            return []
-        if Path(text).suffix.lower() in (".vhd", ".vhdl"):
-            entry.problem(f"{text!r} is VHDL, which is not supported by this version of tbkit; supported: .v and .sv files")
-            return []
-        if any(mark in text for mark in "*?["):
-            base = Path(text).anchor
-            start = Path(base) if base else self.folder
-            found = sorted(path for path in start.glob(str(Path(text).relative_to(base)) if base else text) if path.is_file())
-            if not found:
-                entry.problem(f"no file matches {text!r} in {self.folder}")
-        else:
-            found = [self.folder / text]
-            if not found[0].is_file():
-                entry.problem(f"there is no file {str(found[0])!r}; paths start from the folder of the decoder file")
-        for path in found:
-            if path.suffix not in VERILOG_SUFFIXES:
-                entry.problem(f"{path.name!r} does not end in {one_of(VERILOG_SUFFIXES)}")
-        return [path.resolve() for path in found]
+        def read(text: str) -> list[Path]:
+            if Path(text).suffix.lower() in (".vhd", ".vhdl"):
+                msg = f"{quoted(text)} is VHDL, which is not supported by this version of tbkit; supported: .v and .sv files"
+                raise ValueError(msg)
+            if any("**" in part and part != "**" for part in Path(text).parts):
+                msg = f"found {quoted(text)}, but ** stands for whole folders only, as in rtl/**/*.v"
+                raise ValueError(msg)
+            one = self.folder / text
+            if not any(mark in text for mark in "*?[") or one.is_file():
+                if not one.is_file():
+                    what = "it is a folder" if one.is_dir() else "there is no such file"
+                    msg = f"{str(one)!r}: {what}; name files, by paths from the folder of the decoder file"
+                    raise ValueError(msg)
+                found = [one]
+            else:
+                anchor = Path(text).anchor
+                matches = (self.folder / anchor).glob(str(Path(text).relative_to(anchor)))
+                found = sorted(path for path in matches if path.is_file())
+                if not found:
+                    msg = f"no file matches {quoted(text)} in {str(self.folder)!r}"
+                    raise ValueError(msg)
+            for path in found:
+                if path.suffix not in VERILOG_SUFFIXES:
+                    msg = f"{path.name!r} does not end in {one_of(VERILOG_SUFFIXES)}"
+                    raise ValueError(msg)
+            return [path.resolve() for path in found]
+
+        return entry.convert(_as_path(read), [])
 
     def _folder(self, entry: Entry) -> Path:
-        text = entry.text()
-        path = self.folder / text
-        if text and not path.is_dir():
-            entry.problem(f"there is no folder {str(path)!r}; paths start from the folder of the decoder file")
-        return path.resolve()
+        def read(text: str) -> Path:
+            path = self.folder / text
+            if not path.is_dir():
+                msg = f"{str(path)!r}: there is no such folder; paths start from the folder of the decoder file"
+                raise ValueError(msg)
+            return path.resolve()
+
+        return entry.convert(_as_path(read), self.folder)
 
     @staticmethod
     def _parameter(name: str, entry: Entry) -> tuple[str, int | str]:
-        if not is_identifier(name):
-            entry.problem(f"{name!r} is not an HDL name")
+        if fault := identifier_fault(name):
+            entry.problem(fault)
 
         def read(text: str) -> int | str:
-            if re.fullmatch(r"[+-]?\d{1,10}", text) and -(1 << 31) <= int(text) < 1 << 31:
-                return int(text)
-            if re.fullmatch(r"[A-Za-z0-9_ .,+-]{1,200}", text):
+            value = whole_number(text)
+            if value is not None and -(1 << 31) <= value < 1 << 31:
+                return value
+            # What looks like a number is never passed on as text: the decoder would take its characters for one.
+            if not re.match(r"[+-]?\.?\d[\d_.e+-]*$", text, re.IGNORECASE) and re.fullmatch(r"[A-Za-z0-9_ .,+-]{1,200}", text):
                 return text
-            msg = f"found {text!r}, expected a 32-bit whole number, or text of letters, digits, blanks and _.,+-"
+            msg = f"found {quoted(text)}, expected a 32-bit whole number, or text of letters, digits, blanks and _.,+-"
             raise ValueError(msg)
 
         fallback: int | str = 0
@@ -177,7 +201,7 @@ class _Reader:
         entry = self.top.require("clock", "{port: clk, rate: 50 MHz}")
         if entry is None:
             return Clock("", 1000)
-        if not entry.is_map and entry.text() == "none":
+        if entry.is_word("none"):
             entry.problem("a decoder without a clock is not supported by this version of tbkit")
             return Clock("", 1000)
         section = entry.section(("port", "rate", "edge"))
@@ -188,7 +212,7 @@ class _Reader:
         if rate:
             quantity = rate.quantity("rate")
             period_ps = round(Fraction(units.PS_PER_S) / quantity.value)
-            if not SHORTEST_PERIOD_PS <= period_ps <= units.PS_PER_S:
+            if rate.sound and not 1 <= quantity.value <= units.PS_PER_S // SHORTEST_PERIOD_PS:
                 rate.problem(
                     f"found {rate.text()!r}, expected a rate from 1 Hz to {units.PS_PER_S // SHORTEST_PERIOD_PS // 10**9} GHz"
                 )
@@ -199,9 +223,9 @@ class _Reader:
 
     def reset(self) -> Reset | None:
         entry = self.top.require("reset", "{port: rst_n, active: low, kind: async, clocks: 4}` or `reset: none")
-        if entry is None or (not entry.is_map and entry.choice(("none",))):
+        if entry is None or entry.is_word("none"):
             return None
-        section = entry.section(("port", "active", "kind", "clocks"))
+        section = entry.section(("port", "active", "kind", "clocks"), or_word="none")
         port = section.require("port", "rst_n")
         active = section.require("active", "low")
         kind = section.require("kind", "async")
@@ -223,7 +247,7 @@ class _Reader:
             if states.is_list:
                 rest_states = tuple(item.choice(A_LEADS_B) for item in states.items())
             else:
-                states.choice(("any",))
+                states.choice(("any",), instead=" or a list of states such as [00, 11]")
         return Start(
             count.integer(-(1 << 63), (1 << 63) - 1) if count else 0,
             rest_states,
@@ -245,28 +269,32 @@ class _Reader:
         for name, value in entry.pairs("a map of input names and values") if entry else []:
             section = value.section(("port", "role", "value", "width", "active")) if value.is_map else None
             role_entry = section.get("role") if section else None
-            role = _choice(role_entry, _ROLES, _LATER_ROLES) if role_entry else "constant"
+            role = role_entry.choice(_ROLES, _LATER_ROLES) if role_entry else "constant"
             port_entry = section.get("port") if section else None
             port = port_entry.identifier() if port_entry else name
-            if port_entry is None and not is_identifier(name):
-                value.problem(f"{name!r} is not an HDL name; write {{port: NAME, value: 0}}")
-            if role == "clear-error":
+            if port_entry is None and (fault := identifier_fault(name)):
+                value.problem(f"{fault}; or any word, with {{port: NAME}}")
+            if section is not None and role == "clear-error":
                 if clear is not None:
                     value.problem("a second clear-error input; one is supported")
-                assert section is not None
                 for key in ("value", "width"):
                     if extra := section.get(key):
                         extra.problem("a clear-error input has no constant value; the tool drives it")
                 clear = Port(port, None, _active_low(section))
                 continue
             if section is None:
-                constants.append(Constant(port, value.integer(0, 1)))
+                constants.append(Constant(port, value.integer(0, 1, "; a wider input is written {value: 5, width: 3}")))
+                continue
+            if role_entry and not role_entry.sound:
                 continue
             width_entry, level = section.get("width"), section.require("value", "1")
             width = width_entry.integer(1, 64) if width_entry else 1
+            if width_entry and not width_entry.sound:
+                width = 64
             if extra := section.get("active"):
                 extra.problem("a constant is driven as it is written; `active` belongs to inputs with another role")
-            constants.append(Constant(port, level.integer(0, (1 << width) - 1) if level else 0, width))
+            hint = "" if width_entry else "; a wider input needs its `width`"
+            constants.append(Constant(port, level.integer(0, (1 << width) - 1, hint) if level else 0, width))
         return tuple(constants), clear
 
     def count(self) -> Count | None:
@@ -281,7 +309,9 @@ class _Reader:
         resolution = section.get("resolution")
         forward, at, overflow_entry = section.get("forward"), section.get("at"), section.get("overflow")
         modulo, lowest, highest = section.get("modulo"), section.get("lowest"), section.get("highest")
-        width = width_entry.integer(2, 64) if width_entry else 16
+        width = width_entry.integer(2, 64) if width_entry else 64
+        if width_entry and not width_entry.sound:
+            width = 64
         signed = signed_entry is not None and signed_entry.flag()
         low, high = (-(1 << (width - 1)), (1 << (width - 1)) - 1) if signed else (0, (1 << width) - 1)
         overflow = overflow_entry.choice(("wrap", "hold", "modulo")) if overflow_entry else "wrap"
@@ -294,14 +324,14 @@ class _Reader:
             else:
                 low, high = 0, modulo.integer(2, min(high + 1, 1 << 62)) - 1
         elif modulo is not None:
-            modulo.problem("`modulo` belongs to `overflow: modulo`")
+            modulo.problem("`modulo` belongs to `overflow: modulo`; add that, or take this away")
         for limit in (lowest, highest):
             if limit is not None and overflow != "hold":
-                limit.problem("`lowest` and `highest` belong to `overflow: hold`")
+                limit.problem("`lowest` and `highest` belong to `overflow: hold`; add that, or take them away")
         if overflow == "hold":
             low, high = lowest.integer(low, high) if lowest else low, highest.integer(low, high) if highest else high
-            if low >= high:
-                entry.problem(f"the range from {low} to {high} holds no two counts")
+            if low >= high and entry.sound:
+                entry.problem(f"the range from {low} to {high} holds no two counts; `highest` must be above `lowest`")
         return Count(
             port.identifier() if port else "",
             width,
@@ -324,7 +354,7 @@ class _Reader:
         return Direction(
             port.identifier() if port else "",
             forward.level() if forward else 1,
-            valid is not None and _choice(valid, ("always", "with-count"), _LATER_DIRECTION) == "with-count",
+            valid is not None and valid.choice(("always", "with-count"), _LATER_DIRECTION) == "with-count",
         )
 
     def step(self) -> Port | None:
@@ -334,7 +364,7 @@ class _Reader:
         section = entry.section(("port", "kind", "active"))
         port, kind = section.require("port", "step"), section.require("kind", "pulse")
         if kind:
-            _choice(kind, ("pulse",), _LATER_STEP)
+            kind.choice(("pulse",), _LATER_STEP)
         return Port(port.identifier() if port else "", None, _active_low(section))
 
     def error(self) -> Error | None:
@@ -345,7 +375,7 @@ class _Reader:
         port, kind = section.require("port", "err"), section.require("kind", "pulse")
         return Error(
             Port(port.identifier() if port else "", None, _active_low(section)),
-            kind is not None and _choice(kind, ("pulse", "sticky"), _LATER_ERROR) == "sticky",
+            kind is not None and kind.choice(("pulse", "sticky"), _LATER_ERROR) == "sticky",
         )
 
     def index(self) -> Index | None:
@@ -355,7 +385,7 @@ class _Reader:
         section = entry.section(("action", "when", "sense"))
         action, when, sense = section.require("action", "zero"), section.get("when"), section.get("sense")
         if action:
-            _choice(action, ("zero",), _LATER_INDEX)
+            action.choice(("zero",), _LATER_INDEX)
         gate = when.section(("a", "b")) if when else None
         a, b = (gate.get("a"), gate.get("b")) if gate else (None, None)
         return Index(
@@ -371,7 +401,7 @@ class _Reader:
             return Latency(none, none, none, none, none, none)
         section = entry.section(("count", "direction", "step", "error", "index", "clear"))
         given = {key: _span(value) for key in section.keys if (value := section.get(key))}
-        if not {"count", "step"} & given.keys() and entry.is_map:
+        if not {"count", "step"} & given.keys() and entry.sound:
             entry.problem("the key 'count' is missing; write for example `count: 3` (the key 'step' where there is no count)")
         main = given.get("count", given.get("step", Span(0, 0)))
         direction, step, error, index = (given.get(key, main) for key in ("direction", "step", "error", "index"))
@@ -379,14 +409,14 @@ class _Reader:
 
     def filter(self) -> Filter:
         entry = self.top.get("filter")
-        if entry is None or (not entry.is_map and entry.choice(("none",))):
+        if entry is None or entry.is_word("none"):
             return Filter()
-        section = entry.section(("rejects", "passes", "bursts"))
+        section = entry.section(("rejects", "passes", "bursts"), or_word="none")
         rejects_entry, passes_entry = section.require("rejects", "2"), section.require("passes", "3")
         bursts = section.get("bursts")
         rejects = rejects_entry.integer(0, LONGEST_CLOCKS) if rejects_entry else 0
         passes = passes_entry.integer(1, LONGEST_CLOCKS) if passes_entry else 1
-        if rejects_entry and passes_entry and passes <= rejects:
+        if entry.sound and passes <= rejects:
             entry.problem(
                 f"a pulse of {passes} clocks cannot always pass while {rejects} never do; `passes` must be above `rejects`"
             )
@@ -400,15 +430,10 @@ def read_contract(path: Path) -> Contract:
         InputError: with every problem found, each at its line.
     """
     document = load(path, "decoder file")
-    root = document.root
-    for key, value in root.pairs("a map, as every decoder file is"):
-        if key in _LATER_KEYS:
-            value.problem("this key is not supported by this version of tbkit")
-    document.finish()
-    top = root.section(_KEYS)
+    top = document.root.section(_KEYS, _LATER_KEYS)
     version = top.require("tbkit", str(FORMAT))
-    if version and version.text() != str(FORMAT):
-        version.problem(f"found format {version.text()!r}; this version of tbkit reads format {FORMAT}")
+    if version:
+        version.choice((str(FORMAT),), instead=", the format that this version of tbkit reads")
     reader = _Reader(top, path.parent)
     constants, clear = reader.inputs()
     a, b, index_line = reader.lines()
@@ -442,56 +467,54 @@ def read_contract(path: Path) -> Contract:
 
 
 def _check_together(contract: Contract, top: Section) -> None:
-    """Meaning that takes more than one key to see."""
+    """Meaning that takes more than one key to see; a section that is not sound in itself is left out of it."""
 
-    def at(key: str) -> Entry:
-        return top.get(key) or top.entry
+    def note(text: str, key: str, *others: str) -> None:
+        """Note a problem at ``key``, or at the whole file where that is not given."""
+        entries = [entry for each in (key, *others) if (entry := top.get(each))]
+        if top.entry.is_map and all(entry.sound for entry in entries):
+            (top.get(key) or top.entry).problem(text)
 
     if contract.count is None and contract.step is None:
-        at("direction").problem("a decoder needs a `count` or a `step` output: without one there is nothing to check")
+        note("a decoder needs a `count` or a `step` output: without one there is nothing to check", "direction")
     if contract.index is not None and contract.index_line is None:
-        at("index").problem("an index action needs the index line; add it as `lines: {index: enc_z}`")
+        note("an index action needs the index line; add it as `lines: {index: enc_z}`", "index", "lines")
     if contract.index is not None and contract.count is None:
-        at("index").problem("the index action `zero` needs a `count` output")
+        note("the index action `zero` needs a `count` output", "index")
     if contract.clear_error is not None and (contract.error is None or not contract.error.sticky):
-        at("inputs").problem("a clear-error input needs `error: {kind: sticky}`")
+        note("a clear-error input needs `error: {kind: sticky}`", "inputs", "error")
     if contract.count is not None and not contract.count.lowest <= contract.start.count <= contract.count.highest:
-        at("start").problem(
+        note(
             f"the start count {contract.start.count} is outside the count's range"
-            f" {contract.count.lowest} to {contract.count.highest}"
+            f" {contract.count.lowest} to {contract.count.highest}",
+            "start",
+            "count",
         )
-    _check_ports(contract, at)
+    _check_ports(contract, note)
 
 
-def _check_ports(contract: Contract, at: object) -> None:
+def _check_ports(contract: Contract, note: Callable[..., None]) -> None:
     """Every port is used once, and a vector port is used by bits only."""
-    assert callable(at)
-    uses: list[tuple[str, str, int | None]] = [("clock", contract.clock.port, None)]
-    for key, port in (
+    ports: list[tuple[str, Port | None]] = [
+        ("clock", Port(contract.clock.port)),
+        ("reset", contract.reset.port if contract.reset else None),
         ("lines", contract.a),
         ("lines", contract.b),
         ("lines", contract.index_line),
         ("inputs", contract.clear_error),
-    ):
-        if port is not None:
-            uses.append((key, port.name, port.bit))
-    if contract.reset:
-        uses.append(("reset", contract.reset.port.name, None))
-    uses += [("inputs", constant.port, None) for constant in contract.constants]
-    for key, name in (
-        ("count", contract.count.port if contract.count else ""),
-        ("direction", contract.direction.port if contract.direction else ""),
-        ("step", contract.step.name if contract.step else ""),
-        ("error", contract.error.port.name if contract.error else ""),
-    ):
-        if name:
-            uses.append((key, name, None))
-    seen: dict[str, list[int | None]] = {}
-    for key, name, bit in uses:
-        if not name:
+        *(("inputs", Port(constant.port)) for constant in contract.constants),
+        ("count", Port(contract.count.port) if contract.count else None),
+        ("direction", Port(contract.direction.port) if contract.direction else None),
+        ("step", contract.step),
+        ("error", contract.error.port if contract.error else None),
+    ]
+    seen: dict[str, list[tuple[int | None, str]]] = {}
+    for key, port in ports:
+        if port is None or not port.name:
             continue
-        bits = seen.setdefault(name, [])
-        if bits and (bit is None or None in bits or bit in bits):
-            shown = name if bit is None else f"{name}[{bit}]"
-            at(key).problem(f"the port {shown!r} is used twice")
-        bits.append(bit)
+        uses = seen.setdefault(port.name, [])
+        clash = next((other for bit, other in uses if bit is None or port.bit is None or bit == port.bit), None)
+        if clash:
+            shown = port.name if port.bit is None else f"{port.name}[{port.bit}]"
+            note(f"the port {shown!r} is used twice" + (f"; `{clash}` uses it already" if clash != key else ""), key)
+        uses.append((port.bit, key))

@@ -11,6 +11,7 @@ import numpy as np
 import numpy.typing as npt
 
 from tbkit.encoder import Line
+from tbkit.errors import UnfitError
 from tbkit.motion import Int64s
 from tbkit.profile import Bounce, Disturbance, Glitch, Missing
 from tbkit.units import Scale
@@ -60,7 +61,10 @@ def _glitch(disturbance: Glitch, context: _Context, rng: np.random.Generator) ->
     begin, end = context.span_ps
     # One in each of `times` equal parts of the run, so that none touch.
     part = (end - begin) // disturbance.times
-    room = max(part - 2 * width, 1)
+    room = part - 2 * width
+    if room <= 0:
+        msg = f"{disturbance.times} pulses of {disturbance.width} do not fit into its run without touching"
+        raise UnfitError(msg)
     starts = begin + part * np.arange(disturbance.times) + (rng.random(disturbance.times) * room).astype(np.int64)
     rejected = width <= context.scale.clocks["reject"] * context.scale.period_ps
     risk = context.first_risk(disturbance.line, starts, starts + width, sure_to_fail=rejected)
@@ -96,6 +100,9 @@ def disturb(
     generators: list[np.random.Generator],
 ) -> tuple[dict[str, Line], int | None]:
     """Apply the disturbances in order, within ``span_ps``.
+
+    Raises:
+        UnfitError: there is no room for them.
 
     Returns:
         The lines, and the time from which they may no longer tell where the shaft is (None: they always do).

@@ -26,8 +26,10 @@ class Events:
         step: int64[n], by how much the count moves.
         illegal: bool[n], both lines changed at once.
         zero: bool[n], the index makes the count 0 here.
-        leaves_index: bool[n], the index stopped making the count 0 here.
-        open: bool[n], the contract leaves open what happens here.
+        enters_index: bool[n], the index begins to make the count 0 here.
+        leaves_index: bool[n], the index stopped holding the count at 0 here.
+        open: bool[n], the contract leaves open what happens here, and with it the position; an event whose lines do not
+            change only says that something may happen.
     """
 
     period: Int64s
@@ -37,6 +39,7 @@ class Events:
     step: Int64s
     illegal: Bools
     zero: Bools
+    enters_index: Bools
     leaves_index: Bools
     open: Bools
 
@@ -50,10 +53,10 @@ class Epoch:
 
     Attributes:
         begin, end: periods; changes after ``begin`` and up to ``end`` are compared.
-        first, last: the events ``first:last`` belong to it.
+        first, last: the events ``first:last`` belong to it; those that may answer after ``end`` need not be seen.
         base: the count at ``begin``: ``start`` (the contract's start count), ``carry`` (as the events up to here make it)
-            or ``adopt`` (whatever is seen, within ``spread`` of the start count if given).
-        spread: lowest and highest difference from the start count.
+            or ``adopt`` (whatever is seen, if it is one of ``allowed``).
+        allowed: counts, or None for any.
     """
 
     begin: int
@@ -61,7 +64,7 @@ class Epoch:
     first: int
     last: int
     base: str
-    spread: tuple[int, int] | None = None
+    allowed: tuple[int, ...] | None = None
 
 
 @dataclass(frozen=True, slots=True)
@@ -83,8 +86,8 @@ class Expectation:
 
     Attributes:
         events: what the lines do.
-        epochs: where the count and the step are tied to events.
-        error_epochs: where the error is.
+        epochs: where the count is tied to events (the step, in a decoder without count).
+        step_epochs, error_epochs: where the step and the error are.
         direction: levels of a direction output that is always valid.
         sticky_error: levels of a sticky error.
         open_periods: clock periods in which the count is not compared.
@@ -92,6 +95,7 @@ class Expectation:
 
     events: Events
     epochs: tuple[Epoch, ...]
+    step_epochs: tuple[Epoch, ...]
     error_epochs: tuple[Epoch, ...]
     direction: Hold | None
     sticky_error: Hold | None

@@ -9,7 +9,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from fractions import Fraction
-from math import floor, sqrt
+from math import ceil, floor, sqrt
 
 import numpy as np
 import numpy.typing as npt
@@ -17,13 +17,14 @@ import numpy.typing as npt
 from tbkit.contract import A_LEADS_B
 from tbkit.errors import UnfitError
 from tbkit.profile import Action, Dither, Drive, Illegal, Move, Repeat, Rest, Reverse, Walk
-from tbkit.units import Quantity, Scale
+from tbkit.units import LONGEST_PS, PS_PER_S, Quantity, Scale
 
 Int64s = npt.NDArray[np.int64]
 Floats = npt.NDArray[np.float64]
 
-#: More states than this in one profile is refused rather than left to eat the memory.
+#: More states or pieces of motion than this in one profile are refused rather than left to eat the memory.
 MOST_STATES = 50_000_000
+MOST_SEGMENTS = 2_500_000
 
 
 @dataclass(frozen=True, slots=True)
@@ -69,9 +70,17 @@ class _Path:
         self.stand(0)
 
     def stand(self, time_ps: int) -> None:
-        at = float(self.at)
-        self.segments.append((self.now_ps, time_ps, at, at, 0.0, 0.0))
-        self.now_ps += time_ps
+        self._add(time_ps, self.at, 0.0, 0.0)
+
+    def _add(self, time_ps: int, end: Fraction, speed: float, accel: float) -> None:
+        if len(self.segments) >= MOST_SEGMENTS:
+            msg = f"it has more than {MOST_SEGMENTS} pieces of motion"
+            raise UnfitError(msg)
+        if self.now_ps + time_ps > LONGEST_PS:
+            msg = f"it takes longer than {LONGEST_PS // PS_PER_S} s, the most that is simulated"
+            raise UnfitError(msg)
+        self.segments.append((self.now_ps, time_ps, float(self.at), float(end), speed, accel))
+        self.at, self.now_ps = end, self.now_ps + time_ps
 
     def piece(self, by: Fraction, time_ps: int, speed: float, accel: float) -> None:
         """A segment that covers ``by`` in ``time_ps`` with the given start speed and acceleration."""
@@ -79,9 +88,7 @@ class _Path:
         if self.travel > MOST_STATES:
             msg = f"it covers more than {MOST_STATES} states"
             raise UnfitError(msg)
-        end = self.at + by
-        self.segments.append((self.now_ps, time_ps, float(self.at), float(end), speed, accel))
-        self.at, self.now_ps = end, self.now_ps + time_ps
+        self._add(time_ps, self.at + by, speed, accel)
 
     def run(self, by: Fraction, speed: Fraction) -> None:
         """Constant speed."""
@@ -153,8 +160,8 @@ class _Path:
             self.stand(time_ps)
         else:
             speed = self.scale.per_time(action.moving)
-            # Whole states, so that the motion still ends in the middle of a state.
-            self.run(Fraction(max(1, round(abs(speed) * time_ps))) * (1 if speed > 0 else -1), abs(speed))
+            # Whole states, so that the motion still ends in the middle of a state, and not before the input is released.
+            self.run(Fraction(ceil(abs(speed) * time_ps)) * (1 if speed > 0 else -1), abs(speed))
         self.drives.append((action.signal, begin_ps, begin_ps + time_ps))
 
     def _some_time(self, quantity: Quantity) -> int:

@@ -28,11 +28,12 @@ from tbkit.profile import (
     Walk,
 )
 from tbkit.units import Quantity
-from tbkit.yamltree import Entry, Section, load, nearest
+from tbkit.yamltree import Entry, Section, load, nearest, quoted
 
 T = TypeVar("T")
 
 MOST_TIMES = 1_000_000
+MOST_BOUNCES = 1000
 NEEDS = ("count", "direction", "step", "error", "sticky-error", "clear-error", "index", "reset", "no-reset", "filter")
 _LINES = ("a", "b", "index")
 _ONE = Quantity(Fraction(1), "states", "clocks", 1)
@@ -48,17 +49,17 @@ def _times(section: Section, default: int | None = None) -> int:
     return entry.integer(1, MOST_TIMES) if entry else default or 1
 
 
-def _range(entry: Entry, lowest: int) -> tuple[int, int]:
+def _range(entry: Entry, lowest: int, highest: int) -> tuple[int, int]:
     """``3..9`` or a single number."""
 
     def read(text: str) -> tuple[int, int]:
-        match = re.fullmatch(r"(\d{1,6})(?:\.\.(\d{1,6}))?", text)
-        if match is None:
-            msg = f"found {text!r}, expected a whole number or a range such as 3..9"
+        match = re.fullmatch(r"(\d{1,9})(?:\.\.(\d{1,9}))?", text)
+        least, most = (int(match.group(1)), int(match.group(2) or match.group(1))) if match else (lowest - 1, 0)
+        if least > most >= lowest:
+            msg = f"the range {text} runs backwards; write {most}..{least}"
             raise ValueError(msg)
-        least, most = int(match.group(1)), int(match.group(2) or match.group(1))
-        if not lowest <= least <= most:
-            msg = f"found {text!r}, expected a range that starts at {lowest} or above and does not run backwards"
+        if not lowest <= least <= most <= highest:
+            msg = f"found {quoted(text)}, expected a whole number from {lowest} to {highest}, or a range such as 3..9"
             raise ValueError(msg)
         return least, most
 
@@ -72,7 +73,8 @@ def _pair(entry: Entry, kind: str) -> tuple[Quantity, Quantity]:
         return one, one
     items = entry.items()
     if len(items) != 2:
-        entry.problem(f"found {len(items)} values, expected one {kind} or [least, most]")
+        if items:
+            entry.problem(f"found a list of {len(items)}, expected one {kind} or [least, most]")
         return _ONE, _ONE
     least, most = (item.quantity(kind) for item in items)
     return least, most
@@ -121,7 +123,7 @@ def _walk(entry: Entry) -> Action:
     section = entry.section(("travel", "speed", "run"))
     speed, run = section.require("speed", "[0.1 states/dwell, 1 states/dwell]"), section.get("run")
     slow, fast = _pair(speed, "speed") if speed else (_ONE, _ONE)
-    shortest, longest = _range(run, 1) if run else (1, 8)
+    shortest, longest = _range(run, 1, MOST_TIMES) if run else (1, 8)
     return Walk(_quantity(section, "travel", "distance", "2000 states"), slow, fast, shortest, longest)
 
 
@@ -140,7 +142,7 @@ def _drive(signal: str) -> Callable[[Entry], Action]:
 
 def _repeat(entry: Entry) -> Action:
     section = entry.section(("times", "do"))
-    do = section.require("do", "[...]")
+    do = section.require("do", "[{rest: 10 us}]")
     return Repeat(_times(section), _actions(do) if do else ())
 
 
@@ -167,7 +169,7 @@ def _bounce(entry: Entry) -> Disturbance:
     section = entry.section(("on", "for", "pulses"))
     on, time, pulses = section.require("on", "a"), section.require("for", "[0.2 us, 2 us]"), section.require("pulses", "3..9")
     shortest, longest = _pair(time, "time") if time else (_ONE, _ONE)
-    fewest, most = _range(pulses, 0) if pulses else (0, 0)
+    fewest, most = _range(pulses, 0, MOST_BOUNCES) if pulses else (0, 0)
     return Bounce(on.choice(_LINES) if on else "a", shortest, longest, fewest, most)
 
 
@@ -181,11 +183,13 @@ def _missing(entry: Entry) -> Disturbance:
 _DISTURBANCES: dict[str, Callable[[Entry], Disturbance]] = {"glitch": _glitch, "bounce": _bounce, "missing": _missing}
 
 
-def _tagged(entry: Entry, readers: dict[str, Callable[[Entry], T]], what: str) -> list[T]:
+def _tagged(entry: Entry, readers: dict[str, Callable[[Entry], T]], article: str, what: str) -> list[T]:
     """A list of maps with one key each: the name of an action and its settings."""
     found: list[T] = []
-    for item in entry.items():
-        pairs = item.pairs(f"an {what} such as `{next(iter(readers))}: ...`")
+    for item in entry.items(f"a list of {what}s, each begun with `-`"):
+        pairs = item.pairs(f"{article} {what} such as `{next(iter(readers))}: ...`")
+        if not pairs and item.sound:
+            item.problem(f"found an empty map, expected {article} {what} such as `{next(iter(readers))}: ...`")
         if len(pairs) > 1:
             item.problem(f"found {len(pairs)} keys, expected one {what} an item; start each with its own `-`")
         for name, value in pairs[:1]:
@@ -197,7 +201,7 @@ def _tagged(entry: Entry, readers: dict[str, Callable[[Entry], T]], what: str) -
 
 
 def _actions(entry: Entry) -> tuple[Action, ...]:
-    return tuple(_tagged(entry, _ACTIONS, "action"))
+    return tuple(_tagged(entry, _ACTIONS, "an", "action"))
 
 
 def _encoder(entry: Entry) -> Encoder:
@@ -210,7 +214,10 @@ def _encoder(entry: Entry) -> Encoder:
         mark = IndexMark(width.quantity("angle") if width else _ONE, at.quantity("angle", "not negative") if at else _ONE)
         if lines is None:
             index.problem("an index needs the line count; add `lines: 1024` to the encoder")
-    return Encoder(lines.integer(1, 1 << 24) if lines else None, start.choice(A_LEADS_B) if start else "00", mark)
+    line_count = lines.integer(1, 1 << 24) if lines else None
+    if index and mark and line_count and entry.sound and mark.width.value >= 360 * line_count:
+        index.problem(f"the width {mark.width} is no less than the whole revolution of {360 * line_count} deg")
+    return Encoder(line_count, start.choice(A_LEADS_B) if start else "00", mark)
 
 
 def read_profile(path: Path) -> Profile:
@@ -228,7 +235,7 @@ def read_profile(path: Path) -> Profile:
     def read_name(text: str) -> str:
         if re.fullmatch(r"[A-Za-z0-9][A-Za-z0-9._-]{0,63}", text):
             return text
-        msg = f"found {text!r}, expected up to 64 letters, digits and . _ - that start with a letter or digit"
+        msg = f"found {quoted(text)}, expected up to 64 letters, digits and . _ - that start with a letter or digit"
         raise ValueError(msg)
 
     profile = Profile(
@@ -239,7 +246,7 @@ def read_profile(path: Path) -> Profile:
         seed.integer(0, (1 << 63) - 1) if seed else None,
         _actions(motion) if motion else (),
         _encoder(encoder) if encoder else Encoder(),
-        tuple(_tagged(disturb, _DISTURBANCES, "disturbance")) if disturb else (),
+        tuple(_tagged(disturb, _DISTURBANCES, "a", "disturbance")) if disturb else (),
         power_up is not None and power_up.flag(),
     )
     document.finish()

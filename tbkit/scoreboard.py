@@ -13,6 +13,7 @@ from dataclasses import dataclass, field
 import numpy as np
 
 from tbkit.contract import Contract, Span
+from tbkit.counting import counted, into_range
 from tbkit.expectation import Bools, Epoch, Events, Expectation, Hold, Int64s
 from tbkit.findings import Finding, Score
 from tbkit.shaftoracle import Rests
@@ -63,7 +64,7 @@ class _Book:
             event = max(int(np.searchsorted(events.period, clock, side="right")) - 1, 0)
         shown = [f"{events.before[max(event - 2, 0)]:02b}"]
         for n in range(max(event - 2, 0), min(event + 3, len(events))):
-            text = f"{events.after[n]:02b}" if events.after[n] != events.before[n] else "index"
+            text = f"{events.after[n]:02b}" if events.after[n] != events.before[n] else "?" if events.open[n] else "index"
             shown.append(f"[{text}]" if n == event and marked else text)
         return " ".join(shown)
 
@@ -75,7 +76,7 @@ class _Book:
 class _Due:
     """Changes that are due on one output within one epoch, one after another.
 
-    ``alternative`` is another value that may be seen on the way there (``value`` where there is none).
+    ``on_the_way``: the step alone may be seen before the index zeroes the count. ``optional``: may come after the epoch's end.
     """
 
     earliest: Int64s
@@ -83,7 +84,8 @@ class _Due:
     value: Int64s
     step: Int64s
     absolute: Bools
-    alternative: Int64s
+    on_the_way: Bools
+    optional: Bools
     event: Int64s
 
 
@@ -94,7 +96,7 @@ def judge(contract: Contract, stimulus: Stimulus, expectation: Expectation, rest
     if contract.count is not None and trace.count is not None:
         moves = _count(book, expectation, rests, trace.count)
     if contract.step is not None and trace.step is not None:
-        steps = _pulses(book, "step", trace.step, expectation.epochs, expectation.events.step != 0, contract.latency.step)
+        steps = _pulses(book, "step", trace.step, expectation.step_epochs, expectation.events.step != 0, contract.latency.step)
         moves = steps if contract.count is None else moves
     if contract.direction is not None and trace.direction is not None:
         if expectation.direction is not None:
@@ -132,72 +134,42 @@ def _changes_within(series: Series, begin: int, end: int) -> slice:
 
 
 def _into_range(contract: Contract, value: int) -> int:
-    count = contract.count
-    assert count is not None
-    if count.overflow == "hold":
-        return min(max(value, count.lowest), count.highest)
-    value = (value - count.lowest) % count.size + count.lowest
-    # Traces hold int64, so an unsigned 64-bit count is negative in its upper half.
-    return value - (1 << 64) if value >= 1 << 63 else value
+    assert contract.count is not None
+    return into_range(contract.count, value)
 
 
-def _expected_counts(contract: Contract, events: Events, epoch: Epoch, base: int) -> Int64s:
-    """int64[n]: the count after each event of the epoch."""
-    count = contract.count
-    assert count is not None
-    step, zero = events.step[epoch.first : epoch.last], events.zero[epoch.first : epoch.last]
-    total = np.cumsum(step)
-    last_zero = np.maximum.accumulate(np.where(zero, np.arange(len(step)), -1)) if len(step) else step
-    # Sums of steps stay far below 2^63 even where the base does not, so they are brought into range apart.
-    moved = np.where(last_zero >= 0, total - total[np.maximum(last_zero, 0)], total)
-    if count.overflow == "hold":
-        exact = moved + np.where(last_zero >= 0, 0, base)
-        if len(exact) == 0 or (exact.min() >= count.lowest and exact.max() <= count.highest):
-            return exact
-        values, value = [], base
-        for by, zeroed in zip(step.tolist(), zero.tolist(), strict=True):
-            value = 0 if zeroed else min(max(value + by, count.lowest), count.highest)
-            values.append(value)
-        return np.array(values, dtype=np.int64)
-    exact = moved + np.where(last_zero >= 0, 0, base)
-    if count.overflow == "modulo":
-        return np.asarray(exact % count.size)
-    # Two's complement does the rest, up to 64 bits.
-    if count.width == 64:
-        return exact
-    return np.asarray(((exact - count.lowest) & ((1 << count.width) - 1)) + count.lowest)
+def _apart(contract: Contract) -> bool:
+    """Whether the index may answer at another time than the count does."""
+    return contract.latency.count != contract.latency.index or not contract.latency.count.exact
 
 
 def _due_counts(contract: Contract, events: Events, epoch: Epoch, base: int) -> _Due:
     """The count changes that are due in an epoch."""
+    assert contract.count is not None
     chosen = slice(epoch.first, epoch.last)
-    value = _expected_counts(contract, events, epoch, base)
-    before = np.concatenate([[base], value[:-1]]).astype(np.int64) if len(value) else value
     step, zero, leaves = events.step[chosen], events.zero[chosen], events.leaves_index[chosen]
+    value = counted(contract.count, step, zero, base)
+    before = np.concatenate([[base], value[:-1]]).astype(np.int64) if len(value) else value
     by_count, by_index = contract.latency.count, contract.latency.index
     period = events.period[chosen]
+    # A count that the index holds at 0 is let go when the index is seen to have ended.
+    slowly = leaves & (contract.index is not None and not contract.index.edge)
     earliest = period + np.where(zero, by_index.min, by_count.min)
-    latest = period + np.where(zero, by_index.max, np.where(leaves, max(by_count.max, by_index.max), by_count.max))
-    apart = by_count != by_index
-    alternative = value.copy()
-    due = value != before
-    if apart and zero.any():
-        # Counted first, zeroed a little later (or the other way round): the step alone may be seen on the way.
-        on_the_way = zero & (step != 0)
-        earliest = np.where(on_the_way, period + min(by_count.min, by_index.min), earliest)
-        counted = [_into_range(contract, b + s) for b, s in zip(before.tolist(), step.tolist(), strict=True)]
-        alternative = np.where(on_the_way, np.array(counted, dtype=np.int64), value)
-        due |= on_the_way
-    keep = np.flatnonzero(due)
-    return _Due(earliest[keep], latest[keep], value[keep], step[keep], zero[keep], alternative[keep], epoch.first + keep)
-
-
-@dataclass(frozen=True, slots=True)
-class _Moves:
-    """Count changes that were matched with their events: the period of the change, and the event."""
-
-    period: Int64s
-    event: Int64s
+    latest = period + np.where(zero, by_index.max, np.where(slowly, max(by_count.max, by_index.max), by_count.max))
+    # Counted first, zeroed a little later: the step alone may be seen on the way.
+    on_the_way = events.enters_index[chosen] & zero & (step != 0) & _apart(contract)
+    earliest = np.where(on_the_way, period + min(by_count.min, by_index.min), earliest)
+    keep = np.flatnonzero((value != before) | on_the_way)
+    return _Due(
+        earliest[keep],
+        latest[keep],
+        value[keep],
+        step[keep],
+        zero[keep],
+        on_the_way[keep],
+        latest[keep] > epoch.end,
+        epoch.first + keep,
+    )
 
 
 def _count(book: _Book, expectation: Expectation, rests: Rests, series: Series) -> tuple[Int64s, Int64s] | None:
@@ -216,27 +188,29 @@ def _count(book: _Book, expectation: Expectation, rests: Rests, series: Series) 
     for epoch in epochs:
         seen = int(series.value[series.at(epoch.begin)])
         if epoch.base == "carry" and carried is not None:
-            gap = expectation.events.step[done : epoch.first]
-            carried = _into_range(contract, carried + int(gap.sum()))
+            carried = _carried(contract, expectation.events, done, epoch.first, carried)
         base = _base(book, epoch, seen, carried)
         due = _due_counts(contract, expectation.events, epoch, base)
         changes = _changes_within(series, epoch.begin, epoch.end)
         when, value = series.period[changes], series.value[changes]
         book.comparisons += len(due.value)
-        due_total += len(due.value)
+        due_total += int((~due.optional).sum())
         responses += len(value)
         if seen == base and _exactly(due, when, value):
-            periods.append(when)
-            matched.append(due.event)
+            event = due.event[: len(when)]
             if len(when):
-                book.saw_latency(int((when - expectation.events.period[due.event]).max()))
+                book.saw_latency(int((when - expectation.events.period[event]).max()))
+            by_step = ~due.absolute[: len(when)] | (not _apart(contract))
+            periods.append(when[by_step])
+            matched.append(event[by_step])
+            shown = len(when)
         else:
-            right = _walk(book, due, when.tolist(), value.tolist(), seen)
+            right, shown = _walk(book, due, when.tolist(), value.tolist(), seen)
             periods.append(np.array([clock for clock, _ in right], dtype=np.int64))
             matched.append(np.array([event for _, event in right], dtype=np.int64))
         # What a fault has left behind is carried along, so that it is found once.
         carried = int(value[-1]) if len(value) else seen
-        done = epoch.last
+        done = int(due.event[shown]) if shown < len(due.event) else epoch.last
     if due_total and not responses:
         _silent(book, "count", expectation.events, epochs)
     before = sum(book.totals.values())
@@ -246,37 +220,59 @@ def _count(book: _Book, expectation: Expectation, rests: Rests, series: Series) 
 
 def _base(book: _Book, epoch: Epoch, seen: int, carried: int | None) -> int:
     """The count from which an epoch is followed; a finding if it is not the one it must be."""
-    start = book.contract.start.count
     if epoch.base == "start":
+        start = _into_range(book.contract, book.contract.start.count)
         book.comparisons += 1
         if seen != start:
             book.note("start-up-count", "count", epoch.begin, -1, start, seen)
-        return seen if seen != start else start
+        return seen
     if epoch.base == "carry" and carried is not None:
         book.comparisons += 1
         if seen != carried:
             book.note("count-wrong", "count", epoch.begin, -1, carried, seen)
         return seen
-    if epoch.spread is not None:
+    if epoch.allowed is not None:
         book.comparisons += 1
-        allowed = [_into_range(book.contract, start + by) for by in range(epoch.spread[0], epoch.spread[1] + 1)]
-        if seen not in allowed:
-            book.note("start-up-count", "count", epoch.begin, -1, f"{allowed[0]} to {allowed[-1]}", seen)
+        if seen not in epoch.allowed:
+            low, high = epoch.allowed[0], epoch.allowed[-1]
+            expected = low if low == high else f"{low} to {high}"
+            book.note("start-up-count", "count", epoch.begin, -1, expected, seen)
     return seen
 
 
+def _carried(contract: Contract, events: Events, done: int, first: int, base: int) -> int | None:
+    """The count after a gap in which only pulses that come and go were in doubt; None if it cannot be told."""
+    assert contract.count is not None
+    path = counted(contract.count, events.step[done:first], events.zero[done:first], base)
+    if contract.count.overflow == "hold":
+        low, high = (min(base, int(path.min())), max(base, int(path.max()))) if len(path) else (base, base)
+        if low <= contract.count.lowest or high >= contract.count.highest:
+            # At an end, a pulse that comes and goes does not come back to the same count.
+            return None
+    return int(path[-1]) if len(path) else base
+
+
 def _exactly(due: _Due, when: Int64s, value: Int64s) -> bool:
-    """Whether the changes are the due ones, one for one."""
-    return len(when) == len(due.value) and bool(
-        (value == due.value).all() and (when >= due.earliest).all() and (when <= due.latest).all()
+    """Whether the changes are the due ones, one for one; the last ones may not have come yet."""
+    many = len(when)
+    return many <= len(due.value) and bool(
+        (value == due.value[:many]).all()
+        and (when >= due.earliest[:many]).all()
+        and (when <= due.latest[:many]).all()
+        and due.optional[many:].all()
     )
 
 
-def _walk(book: _Book, due: _Due, when: list[int], value: list[int], seen: int) -> list[tuple[int, int]]:
-    """Follow the changes one by one; every difference is a finding. Returns the right ones as (clock, event)."""
-    contract, right = book.contract, []
+def _walk(book: _Book, due: _Due, when: list[int], value: list[int], seen: int) -> tuple[list[tuple[int, int]], int]:
+    """Follow the changes one by one; every difference is a finding.
+
+    Returns the changes that are right and made by a step, as (clock, event), and how many of the due ones were dealt with.
+    """
+    contract = book.contract
+    right: list[tuple[int, int]] = []
     earliest, latest, steps = due.earliest.tolist(), due.latest.tolist(), due.step.tolist()
-    absolute, events = due.absolute.tolist(), due.event.tolist()
+    absolute, optional, events = due.absolute.tolist(), due.optional.tolist(), due.event.tolist()
+    apart = _apart(contract)
     periods = book.events.period
     e = c = 0
     now = seen
@@ -285,8 +281,21 @@ def _walk(book: _Book, due: _Due, when: list[int], value: list[int], seen: int) 
         if e < len(events):
             wayside = _into_range(contract, now + steps[e])
             target = 0 if absolute[e] else wayside
-        passing = e < len(events) and c < len(when) and absolute[e] and when[c] <= latest[e] and value[c] == wayside
-        if e < len(events) and target == now and not passing:
+        passing = False
+        if e < len(events) and c < len(when) and due.on_the_way[e] and steps[e] and wayside != target:
+            passing = earliest[e] <= when[c] <= latest[e] and value[c] == wayside
+            # The step alone: the zero has still to come in time.
+            follows = c + 1 < len(when) and value[c + 1] == target and when[c + 1] <= latest[e]
+            passing &= follows or (optional[e] and c + 1 == len(when))
+        if passing:
+            right.append((when[c], events[e]))
+            steps[e] = 0
+            now = value[c]
+            c += 1
+            continue
+        if e < len(events) and c == len(when) and optional[e]:
+            break
+        if e < len(events) and target == now:
             e += 1  # nothing to be seen here (after an earlier fault, or at the end of a range that holds)
         elif e < len(events) and (c == len(when) or when[c] > latest[e]):
             is_next_due = e + 1 < len(events) and c < len(when) and when[c] >= earliest[e + 1]
@@ -309,22 +318,18 @@ def _walk(book: _Book, due: _Due, when: list[int], value: list[int], seen: int) 
             now = value[c]
             c += 1
         elif value[c] == target:
-            right.append((when[c], events[e]))
+            if not (absolute[e] and apart):
+                right.append((when[c], events[e]))
             book.saw_latency(int(when[c] - periods[events[e]]))
             now = value[c]
             e, c = e + 1, c + 1
-        elif absolute[e] and value[c] == wayside and due.alternative[e] != due.value[e]:
-            # Counted, not yet zeroed: the same event is due still.
-            steps[e] = 0
-            now = value[c]
-            c += 1
         else:
             missed = absolute[e] and value[c] == wayside
             kind = "index-missed" if missed else _extra_kind(book, now, target, value[c], when[c])
             book.note(kind, "count", when[c], events[e], target, value[c])
             now = value[c]
             e, c = e + 1, c + 1
-    return right
+    return right, e
 
 
 def _lost_kind(contract: Contract, now: int, target: int) -> str:
@@ -380,22 +385,30 @@ def _silent(book: _Book, output: str, events: Events, epochs: tuple[Epoch, ...])
 
 def _direction_with_count(book: _Book, series: Series, periods: Int64s, event: Int64s) -> None:
     """The direction in the period in which the count (or step) moves, shifted by the difference of their latencies."""
-    contract = book.contract
+    contract, events = book.contract, book.events
     assert contract.direction is not None
     main = contract.latency.count if contract.count is not None else contract.latency.step
-    counted = book.events.step[event] != 0
-    event, at = event[counted], periods[counted] + contract.latency.direction.min - main.min
-    book.comparisons += int((book.events.step != 0).sum())
-    entry = series.at(at)
-    if series.unknown[entry].any():
-        first = int(np.flatnonzero(series.unknown[entry])[0])
-        book.note("unknown-level", "direction", int(at[first]), int(event[first]), "0 or 1", "X or Z")
-        return
+    span = contract.latency.direction
+    stepped = events.step[event] != 0
+    event, periods = event[stepped], periods[stepped]
+    book.comparisons += len(event)
     forward = contract.direction.forward_level
-    expected = np.where(book.events.step[event] > 0, forward, 1 - forward)
-    seen = series.value[entry]
-    for n in np.flatnonzero(seen != expected).tolist():
-        book.note("direction-wrong", "direction", int(at[n]), int(event[n]), int(expected[n]), int(seen[n]))
+    expected = np.where(events.step[event] > 0, forward, 1 - forward)
+    together = span == main or (span.exact and main.exact)
+    first = periods + span.min - main.min if together else events.period[event] + span.min
+    last = first if together else events.period[event] + span.max
+    begin, end = series.at(first), series.at(last)
+    ok = (series.value[end] == expected) & ~series.unknown[end]
+    for n in np.flatnonzero(~ok).tolist():
+        entries = slice(int(begin[n]), int(end[n]) + 1)
+        if not together and bool(((series.value[entries] == expected[n]) & ~series.unknown[entries]).any()):
+            # Its latency is not tied to the count's: right at some time within its range is right.
+            continue
+        if series.unknown[entries].any():
+            book.note("unknown-level", "direction", int(last[n]), int(event[n]), "0 or 1", "X or Z")
+            return
+        seen = int(series.value[end[n]])
+        book.note("direction-wrong", "direction", int(last[n]), int(event[n]), int(expected[n]), seen)
 
 
 def _levels(book: _Book, output: str, series: Series, hold: Hold) -> None:
@@ -449,18 +462,22 @@ def _pulses(
         if output == "step":
             # While the index holds the count at 0, a decoder may give a step for a motion or not.
             free = events.zero[due]
-            may, must = (_in_window(seen, events.period[chosen], latency) for chosen in (due[free], due[~free]))
-            seen = seen[must | ~may]
+            may, wants = (_in_window(seen, events.period[chosen], latency) for chosen in (due[free], due[~free]))
+            seen = seen[wants | ~may]
             due = due[~free]
         # Each event's absence of a pulse is compared as well as each pulse.
         book.comparisons += epoch.last - epoch.first
-        due_total, seen_total = due_total + len(due), seen_total + len(seen)
         at = events.period[due]
-        if len(seen) == len(due) and bool((seen >= at + latency.min).all() and (seen <= at + latency.max).all()):
+        must = int(np.searchsorted(at, epoch.end - latency.max, side="right"))
+        due_total, seen_total = due_total + must, seen_total + len(seen)
+        answered = at[: len(seen)]
+        if must <= len(seen) <= len(due) and bool(
+            (seen >= answered + latency.min).all() and (seen <= answered + latency.max).all()
+        ):
             right_period.append(seen)
-            right_event.append(due)
+            right_event.append(due[: len(seen)])
             continue
-        right = _walk_pulses(book, output, at, due.tolist(), seen.tolist(), latency)
+        right = _walk_pulses(book, output, at, due.tolist(), seen.tolist(), latency, must)
         right_period.append(np.array([clock for clock, _ in right], dtype=np.int64))
         right_event.append(np.array([event for _, event in right], dtype=np.int64))
     if due_total and not seen_total and output == "step":
@@ -475,12 +492,17 @@ def _in_window(clocks: Int64s, causes: Int64s, latency: Span) -> Bools:
     return np.asarray(first != last)
 
 
-def _walk_pulses(book: _Book, output: str, at: Int64s, due: list[int], seen: list[int], latency: Span) -> list[tuple[int, int]]:
+def _walk_pulses(
+    book: _Book, output: str, at: Int64s, due: list[int], seen: list[int], latency: Span, must: int
+) -> list[tuple[int, int]]:
+    """Follow the pulses one by one; of the due ones only the first ``must`` have to be seen."""
     missed, false = ("error-missed", "error-false") if output == "error" else ("step-wrong", "step-wrong")
     right: list[tuple[int, int]] = []
     earliest, latest = (at + latency.min).tolist(), (at + latency.max).tolist()
     e = c = 0
     while e < len(due) or c < len(seen):
+        if c == len(seen) and e >= must:
+            break
         if e < len(due) and (c == len(seen) or seen[c] > latest[e]):
             is_next_due = e + 1 < len(due) and c < len(seen) and seen[c] >= earliest[e + 1]
             soon = c < len(seen) and seen[c] <= latest[e] + latency.max + 1

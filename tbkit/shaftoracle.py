@@ -1,7 +1,8 @@
 """The shaft oracle: at every rest the count is where the shaft truly is, whatever the lines did on the way.
 
-It knows nothing of sampling, filtering or latency and shares no code with the line oracle. It is silent once the lines
-stop telling where the shaft is, until a reset at rest or the index gives a new origin.
+It knows nothing of sampling, filtering or latency and shares no code with the line oracle; of the decoder's limits it knows
+only how long a state and a level have to last. It is silent once the shaft is faster than that, or the lines stop telling
+where it is, until a reset at rest or the index gives a new origin.
 """
 
 from __future__ import annotations
@@ -62,11 +63,15 @@ def rests(contract: Contract, stimulus: Stimulus, doubtful_ps: Int64s) -> Rests:
     place = np.concatenate([[first], np.where(ledger.up, ledger.number, ledger.number - 1)])
     since_ps = np.concatenate([[0], ledger.time_ps])
     counted, gated = _counted(count, place), _gated(contract, stimulus, place)
-    if contract.index is not None and contract.index.edge:
-        gated = np.where((gated == 1) & (np.concatenate([[0], gated[:-1]]) == 1), 0, gated)
+    hurried_ps = _hurried(contract, stimulus)
+    for begin_ps, end_ps in _short(stimulus.ideal.lines["index"].toggles_ps, contract.filter.passes * period_ps).tolist():
+        # An index pulse, or a gap between two, that need not be seen.
+        gated = np.where((gated == 1) & (since_ps >= begin_ps) & (since_ps <= end_ps), -1, gated)
 
     quiet_ps = contract.settle_clocks * period_ps
-    moves = np.unique(np.concatenate([line.toggles_ps for line in (*stimulus.lines.values(), *stimulus.drives.values())]))
+    acting = [line.toggles_ps for line in (*stimulus.lines.values(), *stimulus.drives.values())]
+    # The shaft as well: chatter can delay the first edge that is seen of a motion.
+    moves = np.unique(np.concatenate([*acting, ledger.time_ps]))
     ends = np.append(moves[1:], stimulus.periods * period_ps)
     still = ends - moves > quiet_ps + period_ps
     check_ps = ends[still] // period_ps * period_ps - 1
@@ -74,7 +79,7 @@ def rests(contract: Contract, stimulus: Stimulus, doubtful_ps: Int64s) -> Rests:
     # A disturbance may go on disturbing, so what is lost to one is lost for good.
     good = check_ps < (stimulus.lost_ps if stimulus.lost_ps is not None else np.iinfo(np.int64).max)
     origins = _origins(contract, stimulus, since_ps, counted, gated, quiet_ps)
-    origins += [_Origin(int(time), None, 0) for time in doubtful_ps]
+    origins += [_Origin(int(time), None, 0) for time in [*doubtful_ps.tolist(), *hurried_ps.tolist()]]
     origins.sort(key=lambda origin: origin.time_ps)
     times = np.array([origin.time_ps for origin in origins], dtype=np.int64)
     found: list[tuple[int, int]] = []
@@ -95,6 +100,23 @@ def rests(contract: Contract, stimulus: Stimulus, doubtful_ps: Int64s) -> Rests:
         found.append((at_ps // period_ps, here - (1 << 64) if here >= 1 << 63 else here))
     table = np.array(found, dtype=np.int64).reshape(-1, 2)
     return Rests(table[:, 0], table[:, 1])
+
+
+def _short(toggles_ps: Int64s, least_ps: int) -> Int64s:
+    """int64[n, 2]: (begin, end) of every level that lasts less than ``least_ps``."""
+    short = np.flatnonzero(np.diff(toggles_ps) < least_ps)
+    return np.stack([toggles_ps[short], toggles_ps[short + 1]], axis=1)
+
+
+def _hurried(contract: Contract, stimulus: Stimulus) -> Int64s:
+    """When the shaft moves faster than the decoder promises to follow."""
+    period_ps, ideal = stimulus.period_ps, stimulus.ideal
+    # Edge times are rounded to whole ps, so a state may look shorter than it is by that much.
+    parts = [_short(ideal.ledger.time_ps, contract.shortest_state * period_ps - 2)]
+    parts += [_short(ideal.lines[name].toggles_ps, contract.filter.passes * period_ps - 2) for name in ("a", "b")]
+    if contract.index is not None:
+        parts.append(_short(ideal.lines["index"].toggles_ps, contract.filter.passes * period_ps - 2))
+    return np.concatenate([part[:, 0] for part in parts])
 
 
 @dataclass(frozen=True, slots=True)
@@ -119,7 +141,14 @@ def _origins(
         # The state is read from the shaft; if the lines lie, the run is lost anyway.
         state = A_LEADS_B[int(_place(stimulus, at)) % 4]
         known = not near and state in contract.start.rest_states
-        origins.append(_Origin(time, contract.start.count if known else None, int(counted[at])))
+        value = contract.start.count if known else None
+        if gated[at] and contract.start.count != 0:
+            # The index is on when the reset ends: sensed as a level it zeroes the count, as an edge it may.
+            sure = known and gated[at] == 1 and contract.index is not None and not contract.index.edge
+            value = 0 if sure else None
+        origins.append(_Origin(time, value, int(counted[at])))
+    if contract.index is not None and contract.index.edge:
+        gated = np.where((gated == 1) & (np.concatenate([[0], gated[:-1]]) == 1), 0, gated)
     for at in np.flatnonzero(gated).tolist():
         origins.append(_Origin(int(since_ps[at]), 0 if gated[at] == 1 else None, int(counted[at])))
     return origins

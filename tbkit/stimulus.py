@@ -24,6 +24,8 @@ SIGNALS = (*LINES, "reset", "clear")
 CLEARANCE_PS = 2
 #: At most this many clock periods are simulated for one profile.
 MOST_PERIODS = 2_000_000_000
+#: A word holds its wait in 48 bits.
+LONGEST_WAIT_PS = (1 << 48) - 1
 
 
 @dataclass(frozen=True, slots=True)
@@ -172,6 +174,9 @@ def compile_stimulus(profile: Profile, contract: Contract, seed: int, most_perio
     periods = last_ps // period_ps + 2 * settle + 8
     if periods > most_periods:
         raise _too_long(periods, most_periods)
+    if np.diff(unfold.played_ps, append=periods * period_ps).max() > LONGEST_WAIT_PS:
+        msg = f"nothing moves for more than {LONGEST_WAIT_PS} ps, the longest wait that can be played"
+        raise UnfitError(msg)
 
     def play(line: Line) -> Line:
         return Line(line.first, _folded(line.toggles_ps, unfold))

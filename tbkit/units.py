@@ -35,7 +35,11 @@ UNITS = {
     "rate": ", ".join(_RATES_HZ),
 }
 
-_QUANTITY = re.compile(r"\s*([+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d{1,3})?)\s*(.*?)\s*")
+_QUANTITY = re.compile(r"\s*([+-]?(?:\d+\.?\d*|\.\d+)(?:[eE]([+-]?\d+))?)\s*(.*?)\s*")
+#: Longer numbers and larger exponents have no use, and would make fractions that never end.
+_MOST_DIGITS, _LARGEST_EXPONENT = 40, 30
+#: Longer times are refused: 11.6 days, so that sums of a few still fit into 64 bits.
+LONGEST_PS = 10**18
 
 
 @dataclass(frozen=True, slots=True)
@@ -53,12 +57,9 @@ class Quantity:
         return f"{number} {'/'.join(part for part in (self.distance, per) if part)}"
 
 
-def number_and_unit(text: str) -> tuple[Fraction, str] | None:
-    """Split ``"1.5 us"`` into its exact number and its unit (``""`` if there is none); None if it is no number."""
-    match = _QUANTITY.fullmatch(text)
-    if match is None:
-        return None
-    return Fraction(match.group(1)), match.group(2)
+def a_kind(kind: str) -> str:
+    """The kind with its article."""
+    return f"an {kind}" if kind[0] == "a" else f"a {kind}"
 
 
 def parse(text: str, kind: str) -> Quantity:
@@ -67,18 +68,18 @@ def parse(text: str, kind: str) -> Quantity:
     Raises:
         ValueError: what stood there and which units fit.
     """
-    split = number_and_unit(text)
-    if split is None:
-        msg = f"{text!r} is not a number with a unit; units for a {kind}: {UNITS[kind]}"
+    match = _QUANTITY.fullmatch(text)
+    shown = repr(text[:60])
+    unfit = f"found {shown}, expected a number and a unit for {a_kind(kind)}: {UNITS[kind]}"
+    if match is None:
+        raise ValueError(unfit)
+    number, exponent, unit = match.groups()
+    if len(number) > _MOST_DIGITS or len(exponent or "") > 4 or abs(int(exponent or 0)) > _LARGEST_EXPONENT:
+        msg = f"found {shown}, expected a number of at most {_MOST_DIGITS} digits with an exponent of at most {_LARGEST_EXPONENT}"
         raise ValueError(msg)
-    value, unit = split
-    if not unit:
-        msg = f"{text!r} needs a unit; units for a {kind}: {UNITS[kind]}"
-        raise ValueError(msg)
-    quantity = _with_unit(value, unit, kind)
+    quantity = _with_unit(Fraction(number), unit, kind)
     if quantity is None:
-        msg = f"{unit!r} in {text!r} is not a unit for a {kind}; units that fit: {UNITS[kind]}"
-        raise ValueError(msg)
+        raise ValueError(unfit)
     return quantity
 
 
@@ -163,8 +164,16 @@ class Scale:
         return self.states[unit]
 
     def time_ps(self, quantity: Quantity) -> int:
-        """Length of a time in ps, rounded once, half to even."""
-        return round(quantity.value * self._unit_ps(quantity.time))
+        """Length of a time in ps, rounded once, half to even.
+
+        Raises:
+            UnfitError: the time is longer than :data:`LONGEST_PS`.
+        """
+        time_ps = round(quantity.value * self._unit_ps(quantity.time))
+        if abs(time_ps) > LONGEST_PS:
+            msg = f"{quantity} is longer than {LONGEST_PS // PS_PER_S} s, the most that is simulated"
+            raise UnfitError(msg)
+        return time_ps
 
     def distance_states(self, quantity: Quantity) -> Fraction:
         """Length of a distance in states, exact.

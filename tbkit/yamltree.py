@@ -23,6 +23,7 @@ T = TypeVar("T")
 
 LARGEST_FILE_BYTES = 1 << 20
 DEEPEST_NESTING = 24
+LONGEST_TEXT = 1000
 
 # Verilog-2005 and SystemVerilog keywords that could pass for a port or module name.
 _HDL_IDENTIFIER = re.compile(r"[A-Za-z_][A-Za-z0-9_$]{0,254}")
@@ -47,21 +48,32 @@ _HDL_KEYWORDS = frozenset(
 )
 
 
-def is_identifier(text: str) -> bool:
-    """Whether ``text`` can be a plain identifier in every flavour of Verilog."""
-    return _HDL_IDENTIFIER.fullmatch(text) is not None and text not in _HDL_KEYWORDS
+def identifier_fault(text: str) -> str:
+    """Why ``text`` cannot be a plain identifier in every flavour of Verilog; ``""`` if it can."""
+    if text in _HDL_KEYWORDS:
+        return f"found {text!r}, which is a SystemVerilog keyword; expected an HDL name"
+    if not _HDL_IDENTIFIER.fullmatch(text):
+        return f"found {quoted(text)}, expected an HDL name: a letter or _, then letters, digits, _ or $"
+    return ""
+
+
+def quoted(text: str) -> str:
+    """``text`` for a message: in quotes, on one line, and not endless."""
+    return repr(text if len(text) <= 60 else f"{text[:57]}...")
 
 
 def nearest(word: str, allowed: Iterable[str]) -> str:
     """`` (did you mean 'x'?)``, or nothing when no allowed word is close."""
-    close = difflib.get_close_matches(word, list(allowed), n=1, cutoff=0.6)
-    return f" (did you mean {close[0]!r}?)" if close else ""
+    words = {known.casefold(): known for known in allowed}
+    close = difflib.get_close_matches(word.casefold(), list(words), n=1, cutoff=0.6)
+    return f" (did you mean {words[close[0]]!r}?)" if close else ""
 
 
 @dataclass(slots=True)
 class _Log:
     file: str
     problems: list[Problem] = field(default_factory=list)
+    unsound: list[str] = field(default_factory=list)
 
 
 class Entry:
@@ -77,10 +89,15 @@ class Entry:
         """Note a problem at this place."""
         where = f"{self.path}: " if self.path else ""
         self._log.problems.append(Problem(self._log.file, self.line, where + text))
+        self._log.unsound.append(self.path)
 
     @property
-    def file(self) -> str:
-        return self._log.file
+    def sound(self) -> bool:
+        """Whether no problem was noted here or further inside.
+
+        What does not hold is read as something else that does, so nothing may be concluded from it.
+        """
+        return not any(re.match(rf"{re.escape(self.path)}($|[.\[])", path) for path in self._log.unsound)
 
     @property
     def is_map(self) -> bool:
@@ -94,9 +111,13 @@ class Entry:
         """The scalar as it was written; ``""`` with a problem noted if it is no scalar."""
         if isinstance(self._node, yaml.ScalarNode):
             value = str(self._node.value)
-            if value:
+            if 0 < len(value) <= LONGEST_TEXT:
                 return value
-            self.problem("found nothing, expected a value")
+            self.problem(
+                f"found a text of {len(value)} characters; at most {LONGEST_TEXT} are read"
+                if value
+                else "found nothing, expected a value"
+            )
         else:
             self.problem(f"found a {'map' if self.is_map else 'list'}, expected one value")
         return ""
@@ -112,22 +133,31 @@ class Entry:
             self.problem(str(error))
             return fallback
 
-    def integer(self, lowest: int, highest: int) -> int:
+    def integer(self, lowest: int, highest: int, hint: str = "") -> int:
+        """A whole number, decimal or 0x…; ``hint`` ends the message if it is none."""
+
         def read(text: str) -> int:
-            if re.fullmatch(r"[+-]?(\d[\d_]{0,24}|0x[0-9A-Fa-f]{1,16})", text):
-                value = int(text, 16) if "x" in text else int(text)
-                if lowest <= value <= highest:
-                    return value
-            msg = f"found {text!r}, expected a whole number from {lowest} to {highest}"
+            value = whole_number(text)
+            if value is not None and lowest <= value <= highest:
+                return value
+            msg = f"found {quoted(text)}, expected a whole number from {lowest} to {highest}{hint}"
             raise ValueError(msg)
 
         return self.convert(read, lowest)
 
-    def choice(self, allowed: Sequence[str]) -> str:
+    def choice(self, allowed: Sequence[str], later: Sequence[str] = (), instead: str = "") -> str:
+        """One of ``allowed``.
+
+        A word of ``later`` is refused as not supported yet; ``instead`` says what else than a word may stand here.
+        """
+
         def read(text: str) -> str:
             if text in allowed:
                 return text
-            msg = f"found {text!r}, expected {one_of(allowed)}{nearest(text, allowed)}"
+            if text in later:
+                msg = f"{text!r} is not supported by this version of tbkit; supported: {one_of(allowed)}"
+            else:
+                msg = f"found {quoted(text)}, expected {one_of(allowed)}{instead}{nearest(text, allowed)}"
             raise ValueError(msg)
 
         return self.convert(read, allowed[0])
@@ -140,12 +170,8 @@ class Entry:
 
     def identifier(self) -> str:
         def read(text: str) -> str:
-            if not _HDL_IDENTIFIER.fullmatch(text):
-                msg = f"found {text!r}, expected an HDL name: a letter or _, then letters, digits, _ or $"
-                raise ValueError(msg)
-            if text in _HDL_KEYWORDS:
-                msg = f"found {text!r}, which is a SystemVerilog keyword; expected an HDL name"
-                raise ValueError(msg)
+            if fault := identifier_fault(text):
+                raise ValueError(fault)
             return text
 
         return self.convert(read, "")
@@ -157,16 +183,18 @@ class Entry:
             quantity = units.parse(text, kind)
             fits = {"positive": quantity.value > 0, "not negative": quantity.value >= 0, "not zero": quantity.value != 0}
             if not fits[sign]:
-                msg = f"found {text!r}, expected a {kind} that is {sign}"
+                msg = f"found {quoted(text)}, expected {units.a_kind(kind)} that is {sign}"
                 raise ValueError(msg)
             return quantity
 
         return self.convert(read, units.Quantity(Fraction(1), "states", "clocks", 1))
 
-    def items(self) -> list[Entry]:
-        """The members of a list."""
+    def items(self, what: str = "") -> list[Entry]:
+        """The members of a list; ``what`` says what it should be where members are no single words."""
         if not isinstance(self._node, yaml.SequenceNode):
-            self.problem(f"found {self._shape()}, expected a list")
+            word = self._node.value if isinstance(self._node, yaml.ScalarNode) else ""
+            hint = f"; write [{word}]" if not what and re.fullmatch(r"[\w./*-]{1,40}", word) else ""
+            self.problem(f"found {self._shape()}, expected {what or 'a list'}{hint}")
             return []
         if not self._node.value:
             self.problem("found an empty list, expected at least one item")
@@ -179,10 +207,11 @@ class Entry:
             return []
         found: dict[str, Entry] = {}
         for key_node, node in self._node.value:
-            if not isinstance(key_node, yaml.ScalarNode):
-                Entry(self._log, key_node, self.path).problem("a key must be a plain word")
+            key = str(key_node.value) if isinstance(key_node, yaml.ScalarNode) else ""
+            # Keys are shown as they are in messages, so they are held to what can be shown.
+            if not 0 < len(key) <= 100 or not key.isprintable():
+                Entry(self._log, key_node, self.path).problem("a key must be a plain word of at most 100 characters")
                 continue
-            key = str(key_node.value)
             entry = Entry(self._log, node, f"{self.path}.{key}" if self.path else key)
             entry.line = key_node.start_mark.line + 1
             if key in found:
@@ -191,27 +220,37 @@ class Entry:
                 found[key] = entry
         return list(found.items())
 
-    def section(self, allowed: Sequence[str]) -> Section:
-        """A map whose keys must be among ``allowed``."""
-        return Section(self, allowed)
+    def is_word(self, word: str) -> bool:
+        """Whether just ``word`` stands here."""
+        return isinstance(self._node, yaml.ScalarNode) and self._node.value == word
+
+    def section(self, allowed: Sequence[str], later: Sequence[str] = (), or_word: str = "") -> Section:
+        """A map whose keys must be among ``allowed``; those of ``later`` are refused as not supported yet.
+
+        ``or_word`` is what could stand instead of a map.
+        """
+        return Section(self, allowed, later, or_word)
 
     def _shape(self) -> str:
         if isinstance(self._node, yaml.ScalarNode):
-            return repr(str(self._node.value))
+            return quoted(str(self._node.value)) if self._node.value else "nothing"
         return "a map" if self.is_map else "a list"
 
 
 class Section:
     """A map with known keys; unknown ones are noted with the nearest right word."""
 
-    def __init__(self, entry: Entry, allowed: Sequence[str]) -> None:
+    def __init__(self, entry: Entry, allowed: Sequence[str], later: Sequence[str], or_word: str) -> None:
         self.entry = entry
         self._found: dict[str, Entry] = {}
         self.keys: list[str] = []
-        for key, value in entry.pairs(f"a map with the keys {', '.join(allowed)}"):
+        instead = f"{or_word} or " if or_word else ""
+        for key, value in entry.pairs(f"{instead}a map with the key{'s' * (len(allowed) > 1)} {', '.join(allowed)}"):
             if key in allowed:
                 self._found[key] = value
                 self.keys.append(key)
+            elif key in later:
+                value.problem("this key is not supported by this version of tbkit")
             else:
                 value.problem(f"unknown key; allowed here: {', '.join(allowed)}{nearest(key, allowed)}")
 
@@ -232,6 +271,25 @@ def one_of(words: Sequence[str]) -> str:
     return words[0] if len(words) == 1 else f"{', '.join(words[:-1])} or {words[-1]}"
 
 
+def whole_number(text: str) -> int | None:
+    """The value of ``12``, ``-1_000`` or ``0xff``; None if it is no whole number."""
+    if len(text) <= 40 and re.fullmatch(r"[+-]?(\d+(_\d+)*|0x[0-9A-Fa-f]+)", text):
+        return int(text, 16) if "x" in text else int(text)
+    return None
+
+
+#: What usually lies behind the end of a complaint of the YAML library.
+_YAML_HINTS = {
+    "'\\t' that cannot start any token": "indent with blanks, not with tabs",
+    "but got '['": 'a text with brackets stands in quotes: "ab[0]"',
+    "mapping values are not allowed here": "one `key: value` a line, with a blank after the colon",
+}
+
+
+class _Refused(yaml.MarkedYAMLError):
+    """Sound YAML that is not accepted here."""
+
+
 class _Loader(yaml.SafeLoader):
     """The safe loader without aliases, with bounded nesting."""
 
@@ -245,14 +303,32 @@ class _Loader(yaml.SafeLoader):
             self._refuse("anchors (&name) are not accepted; write the value out", event)
         self.depth += 1
         if self.depth > DEEPEST_NESTING:
-            self._refuse(f"nested deeper than {DEEPEST_NESTING} levels", event)
+            self._refuse(f"nested deeper than {DEEPEST_NESTING} levels, the most that is read", event)
         node: yaml.Node | None = super().compose_node(parent, index)
         self.depth -= 1
         return node
 
     @staticmethod
     def _refuse(text: str, event: Any) -> NoReturn:
-        raise yaml.composer.ComposerError(None, None, text, event.start_mark)
+        raise _Refused(None, None, text, event.start_mark)
+
+
+def _yaml_fault(error: yaml.YAMLError, text: str) -> tuple[int, str]:
+    """Line and text of what the YAML library complains about."""
+    if isinstance(error, yaml.reader.ReaderError):
+        return text.count("\n", 0, error.position) + 1, f"the character U+{ord(text[error.position]):04X} cannot stand in YAML"
+    if not isinstance(error, yaml.MarkedYAMLError):
+        return 1, f"not valid YAML: {error}"
+    mark, begun = error.problem_mark or error.context_mark, error.context_mark
+    line = mark.line + 1 if mark else 1
+    if isinstance(error, _Refused):
+        return line, str(error.problem)
+    said = ": ".join(part for part in (error.context, error.problem) if part)
+    said = said.replace("'<stream end>'", "the end of the file").replace("'<scalar>'", "a text")
+    if begun and mark and begun.line < mark.line:
+        said += f"; it began in line {begun.line + 1}"
+    said += next((f" ({hint})" for sign, hint in _YAML_HINTS.items() if said.endswith(sign)), "")
+    return line, f"not valid YAML: {said}"
 
 
 @dataclass(frozen=True, slots=True)
@@ -284,22 +360,27 @@ def load(path: Path, what: str) -> Document:
         return InputError([Problem(shown, line, text)])
 
     try:
-        size = path.stat().st_size
-        if size > LARGEST_FILE_BYTES:
-            raise fail(1, f"the {what} has {size} bytes; at most {LARGEST_FILE_BYTES} are read")
-        text = path.read_bytes().decode("utf-8")
+        with path.open("rb") as stream:
+            data = stream.read(LARGEST_FILE_BYTES + 1)
     except OSError as error:
         raise fail(1, f"the {what} cannot be read: {error.strerror}") from error
+    if len(data) > LARGEST_FILE_BYTES:
+        raise fail(1, f"the {what} has more than {LARGEST_FILE_BYTES} bytes, the most that is read")
+    try:
+        text = data.decode("utf-8")
     except UnicodeDecodeError as error:
-        raise fail(1, f"the {what} is not UTF-8 text (byte {error.start})") from error
+        line = data.count(b"\n", 0, error.start) + 1
+        raise fail(line, f"the {what} is not UTF-8 text: found the byte 0x{data[error.start]:02x}; save it as UTF-8") from error
+    loader = None
     try:
         loader = _Loader(text)
         node = loader.get_single_node()
-    except yaml.MarkedYAMLError as error:
-        mark = error.problem_mark or error.context_mark
-        raise fail(mark.line + 1 if mark else 1, f"not valid YAML: {error.problem or error.context}") from error
     except yaml.YAMLError as error:
-        raise fail(1, f"not valid YAML: {error}".splitlines()[0]) from error
+        raise fail(*_yaml_fault(error, text)) from error
+    except (ValueError, OverflowError) as error:
+        # The library's own conversions fail so, such as the one of "\UFFFFFFFF".
+        line = loader.line + 1 if loader else 1
+        raise fail(line, "not valid YAML: an escape or a version that is out of range") from error
     if node is None:
         raise fail(1, f"the {what} is empty")
     log = _Log(shown)

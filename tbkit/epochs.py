@@ -1,0 +1,181 @@
+"""Cuts a run into epochs: at resets, and at whatever the contract leaves open."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, replace
+
+import numpy as np
+
+from tbkit.contract import Contract
+from tbkit.counting import counted, into_range
+from tbkit.expectation import Epoch, Events, Int64s
+from tbkit.stimulus import Stimulus
+
+#: Moments from which counting may begin after a reset in motion: with more, the count that follows is not checked.
+MOST_MOMENTS = 200
+
+
+@dataclass(frozen=True, slots=True, order=True)
+class Open:
+    """Periods (inclusive) in which the contract leaves events open; ``known``: the position is sure again afterwards."""
+
+    begin: int
+    end: int
+    known: bool
+
+
+@dataclass(frozen=True, slots=True)
+class Release:
+    """A reset, or power-up.
+
+    Attributes:
+        begin: first period in which it is asserted.
+        end: first period in which it is not.
+        how: ``rest`` (what the contract says about the start holds), ``moving``, ``index`` (the index sets the count) or
+            ``elsewhere`` (the contract says nothing).
+    """
+
+    begin: int
+    end: int
+    how: str
+
+
+@dataclass(frozen=True, slots=True)
+class Activity:
+    """Every period in which a line that matters changes, ``raw`` as sampled and ``passed`` behind the filter."""
+
+    raw: Int64s
+    passed: Int64s
+
+
+def releases(
+    contract: Contract, stimulus: Stimulus, events: Events, spans: list[tuple[int, int]], activity: Activity, index_active: Int64s
+) -> list[Release]:
+    """Sort every (asserted, released) of ``spans`` by what may be said about the time after it.
+
+    ``index_active``: int64, periods in which the index sets the count, among those in which something is released.
+    """
+    found: list[Release] = []
+    settle = contract.start.settle
+    for begin, end in spans:
+        near = np.searchsorted(activity.raw, [end - settle, end + settle])
+        event = int(np.searchsorted(events.period, end + settle))
+        if near[0] != near[1]:
+            how = "moving"
+        elif _state_before(events, stimulus, event) not in contract.start.rest_states:
+            how = "elsewhere"
+        else:
+            how = "index" if contract.start.count != 0 and end in index_active else "rest"
+        found.append(Release(begin, end, how))
+    return found
+
+
+def _state_before(events: Events, stimulus: Stimulus, event: int) -> str:
+    if event < len(events):
+        code = int(events.before[event])
+    elif len(events):
+        code = int(events.after[-1])
+    else:
+        code = 2 * stimulus.lines["a"].first + stimulus.lines["b"].first
+    return format(code, "02b")
+
+
+@dataclass(frozen=True, slots=True)
+class Cutter:
+    """Cuts a run of ``periods`` clock periods."""
+
+    contract: Contract
+    events: Events
+    releases: list[Release]
+    activity: Activity
+    periods: int
+
+    def cut(self, opens: list[Open], low: int, high: int) -> tuple[Epoch, ...]:
+        """The epochs of an output whose changes come ``low`` to ``high`` clocks after their events."""
+        breaks: list[tuple[int, int, Open | Release]] = [(r.begin, r.end, r) for r in self.releases]
+        breaks += [(stretch.begin, stretch.end, stretch) for stretch in opens if not self._in_reset(stretch)]
+        if not self.contract.reset and not self.releases:
+            breaks.append((0, 0, Open(0, 0, known=False)))
+        epochs: list[Epoch] = []
+        building: Epoch | None = None
+        for begin, end, cause in sorted(breaks, key=lambda item: item[:2]):
+            if isinstance(cause, Release):
+                if building is not None:
+                    epochs += self._closed(building, begin - 1, low)
+                building = self._after_release(cause, low, high)
+                continue
+            base = "carry" if cause.known else "adopt"
+            after = end
+            if building is not None:
+                if building.begin < begin + low - 1:
+                    epochs += self._closed(building, begin + low - 1, low)
+                else:
+                    # Begins before things were quiet again after the one before: both are one gap, unsure if either is.
+                    after = max(end, building.begin - high)
+                    base = "carry" if base == building.base == "carry" else "adopt"
+            quiet, event = self._quiet(after, low, high)
+            building = self._open_ended(quiet, event, base)
+        if building is not None:
+            epochs += self._closed(building, self.periods - 1, low)
+        return tuple(epochs)
+
+    def _in_reset(self, stretch: Open) -> bool:
+        return any(r.begin <= stretch.begin and stretch.end < r.end for r in self.releases)
+
+    def _open_ended(self, begin: int, event: int, base: str, allowed: tuple[int, ...] | None = None) -> Epoch:
+        return Epoch(begin, self.periods - 1, event, len(self.events), base, allowed)
+
+    def _closed(self, epoch: Epoch, end: int, low: int) -> list[Epoch]:
+        """The epoch up to ``end``, with the events that may answer by then."""
+        last = max(int(np.searchsorted(self.events.period, end - low, side="right")), epoch.first)
+        return [replace(epoch, end=end, last=last)] if epoch.begin < end else []
+
+    def _after_release(self, release: Release, low: int, high: int) -> Epoch:
+        """The epoch that begins after a release, open-ended."""
+        end, settle = release.end, self.contract.start.settle
+        if release.how == "rest":
+            return self._open_ended(end, int(np.searchsorted(self.events.period, end + settle)), "start")
+        quiet, event = self._quiet(end + settle, low, high)
+        allowed: tuple[int, ...] | None = None
+        if release.how == "index" and self.contract.index is not None:
+            allowed = (0, self.contract.start.count) if self.contract.index.edge else (0,)
+            if int(np.searchsorted(self.events.period, end + settle)) != event:
+                allowed = None
+        elif release.how == "moving":
+            allowed = self._after_motion(end, event)
+        return self._open_ended(quiet, event, "adopt", allowed)
+
+    def _after_motion(self, end: int, event: int) -> tuple[int, ...] | None:
+        """Counts that are right after a release in motion.
+
+        The edges from some moment on are counted, and that moment is the decoder's own.
+        """
+        contract, events = self.contract, self.events
+        settle, count = contract.start.settle, contract.count
+        window = [end - settle, end + settle]
+        first, last = np.searchsorted(events.period, window).tolist()
+        # A pulse that the filter would reject may be what a decoder wakes up to.
+        raw, passed = (
+            np.searchsorted(changes, [end - settle, end + settle]) for changes in (self.activity.raw, self.activity.passed)
+        )
+        sure = raw[1] - raw[0] == passed[1] - passed[0] and not events.open[first:event].any()
+        sure = sure and (contract.illegal_holds or not events.illegal[first:event].any())
+        sure = sure and (contract.index is None or not (events.zero | events.enters_index)[first:event].any())
+        if count is None or not sure or len(contract.start.rest_states) < 4 or last - first > MOST_MOMENTS:
+            return None
+        start = into_range(count, contract.start.count)
+        found = {start} if last == event else set()
+        for moment in range(first, last + 1):
+            values = counted(count, events.step[moment:event], events.zero[moment:event], start)
+            found.add(int(values[-1]) if len(values) else start)
+        return tuple(sorted(found))
+
+    def _quiet(self, after: int, low: int, high: int) -> tuple[int, int]:
+        """The first period at which every event up to ``after`` has shown and no later one can have; and the next event."""
+        periods = self.events.period
+        event = int(np.searchsorted(periods, after, side="right"))
+        begin = after + high
+        while event < len(periods) and int(periods[event]) + low <= begin:
+            begin = int(periods[event]) + high
+            event += 1
+        return begin, event

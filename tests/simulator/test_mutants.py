@@ -1,0 +1,54 @@
+"""Faults of one change are found by the built-in regression, which is not told what to look for."""
+
+from __future__ import annotations
+
+from collections import Counter
+from pathlib import Path
+
+import pytest
+from harness import kinds_found, mutated, play, told, whole
+from mutants import MUTANTS, UNSEEN, Mutant
+
+from tbkit.findings import KINDS
+from tbkit.simulators import Simulator
+
+
+def _check(mutant: Mutant, simulator: Simulator, tmp_path: Path, out: Path) -> None:
+    contract = mutated(mutant, tmp_path)
+    results = play(contract, whole(contract), simulator, out)
+    assert results.failure is None, told(results)
+    assert results.verdict == "fail"
+    assert kinds_found(results.profiles) & set(mutant.kinds), told(results)
+
+
+@pytest.mark.simulator("icarus")
+@pytest.mark.parametrize("mutant", MUTANTS, ids=lambda mutant: mutant.name)
+def test_icarus(mutant: Mutant, simulator: Simulator, tmp_path: Path, out: Path) -> None:
+    _check(mutant, simulator, tmp_path, out)
+
+
+@pytest.mark.simulator("verilator")
+@pytest.mark.parametrize("mutant", [mutant for mutant in MUTANTS if mutant.verilator], ids=lambda mutant: mutant.name)
+def test_verilator(mutant: Mutant, simulator: Simulator, tmp_path: Path, out: Path) -> None:
+    _check(mutant, simulator, tmp_path, out)
+
+
+@pytest.mark.xfail(reason="no built-in profile looks there", strict=True)
+@pytest.mark.simulator("icarus")
+@pytest.mark.parametrize("mutant", UNSEEN, ids=lambda mutant: mutant.name)
+def test_not_yet_found(mutant: Mutant, simulator: Simulator, tmp_path: Path, out: Path) -> None:
+    contract = mutated(mutant, tmp_path)
+    results = play(contract, whole(contract), simulator, out)
+    if results.failure is not None or results.verdict not in ("pass", "fail"):
+        # Not a fault that was overlooked but one that never ran.
+        pytest.exit(told(results))
+    assert results.verdict == "fail"
+
+
+def test_table_is_sound() -> None:
+    names = Counter(mutant.name for mutant in (*MUTANTS, *UNSEEN))
+    assert max(names.values()) == 1
+    assert all(mutant.kinds and set(mutant.kinds) <= KINDS.keys() for mutant in (*MUTANTS, *UNSEEN))
+    # Few of them lean on what one simulator alone can see.
+    assert not any(mutant.verilator and mutant.four_state for mutant in MUTANTS)
+    assert all(kind in {k for m in MUTANTS for k in m.kinds} for kind in KINDS)

@@ -1,0 +1,196 @@
+"""Every way to get a profile wrong is told with its place, what stood there, what is allowed and how to mend it."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+
+import pytest
+
+from tbkit.profile_file import read_profile
+
+TOP_KEYS = "profile, about, needs, power_up, seed, encoder, motion, disturb"
+ACTIONS = "rest, move, reverse, dither, illegal, walk, reset, clear, repeat"
+TIME = "expected a number and a unit for a time: s, ms, us, ns, ps, clocks, dwell, shortest, reject, pass, settle"
+DISTANCE = "expected a number and a unit for a distance: states, cycles, rev, deg, overflow, underflow"
+SPEED = (
+    "expected a number and a unit for a speed: rpm, rev/s, deg/s, Hz (cycles per second), or any distance/time such as states/dwell"
+)
+ACCELERATION = "expected a number and a unit for an acceleration: rev/s2, deg/s2, or any distance/time2 such as states/ms2"
+TIMES = "expected a whole number from 1 to 1000000"
+
+
+def motion(actions: str, expected: str) -> object:
+    """A profile with these actions in line 2; each line of ``expected`` belongs to that line."""
+    return pytest.param(f"profile: p\nmotion: {actions}\n", expected.replace("@", "2: motion"), id=f"motion {actions}"[:60])
+
+
+def other(key: str, value: str, expected: str) -> object:
+    """A sound profile with one more key in line 3."""
+    text = f"profile: p\nmotion: [{{rest: 1 us}}]\n{key}: {value}\n"
+    return pytest.param(text, expected.replace("@", f"3: {key}"), id=f"{key} {value}"[:60])
+
+
+CASES = [
+    # ---- the list of actions
+    motion("", "@: found nothing, expected a list of actions, each begun with `-`"),
+    motion("rest", "@: found 'rest', expected a list of actions, each begun with `-`"),
+    motion("{rest: 1 us}", "@: found a map, expected a list of actions, each begun with `-`"),
+    motion("[]", "@: found an empty list, expected at least one item"),
+    motion("[rest]", "@[0]: found 'rest', expected an action such as `rest: ...`"),
+    motion("[null]", "@[0]: found 'null', expected an action such as `rest: ...`"),
+    motion("[[]]", "@[0]: found a list, expected an action such as `rest: ...`"),
+    motion("[{}]", "@[0]: found an empty map, expected an action such as `rest: ...`"),
+    motion("[{rets: 1 us}]", f"@[0].rets: unknown action; known: {ACTIONS} (did you mean 'rest'?)"),
+    motion("[{velocity: 3}]", f"@[0].velocity: unknown action; known: {ACTIONS}"),
+    motion("[{rest: 1 us, move: {}}]", "@[0]: found 2 keys, expected one action an item; start each with its own `-`"),
+    # ---- quantities
+    motion("[{rest: 1}]", f"@[0].rest: found '1', {TIME}"),
+    motion("[{rest: 1 rpm}]", f"@[0].rest: found '1 rpm', {TIME}"),
+    motion("[{rest: long}]", f"@[0].rest: found 'long', {TIME}"),
+    motion("[{rest: '1,5 us'}]", f"@[0].rest: found '1,5 us', {TIME}"),
+    motion("[{rest: [1 us]}]", "@[0].rest: found a list, expected one value"),
+    motion("[{rest: }]", "@[0].rest: found nothing, expected a value"),
+    motion("[{rest: -1 us}]", "@[0].rest: found '-1 us', expected a time that is not negative"),
+    motion("[{rest: 1e31 s}]", "@[0].rest: found '1e31 s', expected a number of at most 40 digits with an exponent of at most 30"),
+    motion("[{move: {by: 1 us, speed: 1 rpm}}]", f"@[0].move.by: found '1 us', {DISTANCE}"),
+    motion("[{move: {by: 0 rev, speed: 1 rpm}}]", "@[0].move.by: found '0 rev', expected a distance that is not zero"),
+    motion("[{move: {by: 1 rev, speed: 1 us}}]", f"@[0].move.speed: found '1 us', {SPEED}"),
+    motion("[{move: {by: 1 rev, speed: -1 rpm}}]", "@[0].move.speed: found '-1 rpm', expected a speed that is positive"),
+    motion("[{move: {by: 1 rev, speed: 1 rpm, accel: 3 rpm}}]", f"@[0].move.accel: found '3 rpm', {ACCELERATION}"),
+    motion(
+        "[{move: {by: 1 rev, speed: 1 rpm, accel: 0 rev/s2}}]",
+        "@[0].move.accel: found '0 rev/s2', expected an acceleration that is positive",
+    ),
+    # ---- each action
+    motion("[{move: 1 rev}]", "@[0].move: found '1 rev', expected a map with the keys by, speed, accel"),
+    motion("[{move: {by: 1 rev}}]", "@[0].move: the key 'speed' is missing; write for example `speed: 3000 rpm`"),
+    motion("[{move: {by: 1 rev, speed: 1 rpm, jerk: 2}}]", "@[0].move.jerk: unknown key; allowed here: by, speed, accel"),
+    motion(
+        "[{move: {by: 1 rev, speed: 1 rpm, acel: 1 rev/s2}}]",
+        "@[0].move.acel: unknown key; allowed here: by, speed, accel (did you mean 'accel'?)",
+    ),
+    motion(
+        "[{reverse: {in: 12, going: up, speed: 1 states/dwell, times: 0}}]",
+        "@[0].reverse.going: found 'up', expected forward or backward\n"
+        "@[0].reverse.in: found '12', expected 00, 10, 11 or 01\n"
+        f"@[0].reverse.times: found '0', {TIMES}",
+    ),
+    motion("[{dither: {every: 1 us, times: many}}]", f"@[0].dither.times: found 'many', {TIMES}"),
+    motion("[{dither: {every: 1 us, times: 1000001}}]", f"@[0].dither.times: found '1000001', {TIMES}"),
+    motion("[{dither: {every: 0 us, times: 1}}]", "@[0].dither.every: found '0 us', expected a time that is positive"),
+    motion("[{illegal: {}}]", "@[0].illegal: the key 'every' is missing; write for example `every: 2 settle`"),
+    motion(
+        "[{walk: {travel: 10 states, speed: [1 rpm, 2 rpm, 3 rpm], run: 3..1}}]",
+        "@[0].walk.run: the range 3..1 runs backwards; write 1..3\n"
+        "@[0].walk.speed: found a list of 3, expected one speed or [least, most]",
+    ),
+    motion(
+        "[{walk: {travel: 10 states, speed: [], run: 0..4}}]",
+        "@[0].walk.run: found '0..4', expected a whole number from 1 to 1000000, or a range such as 3..9\n"
+        "@[0].walk.speed: found an empty list, expected at least one item",
+    ),
+    motion(
+        "[{walk: {travel: 10 states, speed: 1 rpm, run: 1-4}}]",
+        "@[0].walk.run: found '1-4', expected a whole number from 1 to 1000000, or a range such as 3..9",
+    ),
+    motion("[{reset: 4 clocks}]", "@[0].reset: found '4 clocks', expected a map with the keys for, moving"),
+    motion("[{clear: {for: 1 us, moving: 0 rpm}}]", "@[0].clear.moving: found '0 rpm', expected a speed that is not zero"),
+    motion("[{repeat: {times: 3}}]", "@[0].repeat: the key 'do' is missing; write for example `do: [{rest: 10 us}]`"),
+    motion(
+        "[{repeat: {times: 3, do: {rest: 1 us}}}]",
+        "@[0].repeat.do: found a map, expected a list of actions, each begun with `-`",
+    ),
+    motion(
+        "[{rest: 1 us}, {repeat: {times: 3, do: [{rest: 1 us}, {repaet: 3}]}}]",
+        f"@[1].repeat.do[1].repaet: unknown action; known: {ACTIONS} (did you mean 'repeat'?)",
+    ),
+    # ---- disturbances
+    other("disturb", "{}", "@: found a map, expected a list of disturbances, each begun with `-`"),
+    other("disturb", "[glitch]", "@[0]: found 'glitch', expected a disturbance such as `glitch: ...`"),
+    other("disturb", "[{}]", "@[0]: found an empty map, expected a disturbance such as `glitch: ...`"),
+    other("disturb", "[{glich: 1}]", "@[0].glich: unknown disturbance; known: glitch, bounce, missing (did you mean 'glitch'?)"),
+    other("disturb", "[{glitch: {on: z, width: 1 reject, times: 3}}]", "@[0].glitch.on: found 'z', expected a, b or index"),
+    other(
+        "disturb",
+        "[{glitch: {on: a}, bounce: 2}]",
+        "@[0].glitch: the key 'times' is missing; write for example `times: 10`\n"
+        "@[0].glitch: the key 'width' is missing; write for example `width: 1 reject`\n"
+        "@[0]: found 2 keys, expected one disturbance an item; start each with its own `-`",
+    ),
+    other(
+        "disturb",
+        "[{bounce: {on: a, for: [1 us], pulses: 9..3}}]",
+        "@[0].bounce.for: found a list of 1, expected one time or [least, most]\n"
+        "@[0].bounce.pulses: the range 9..3 runs backwards; write 3..9",
+    ),
+    other(
+        "disturb",
+        "[{bounce: {on: a, for: 1 us, pulses: 1..1001}}]",
+        "@[0].bounce.pulses: found '1..1001', expected a whole number from 0 to 1000, or a range such as 3..9",
+    ),
+    other("disturb", "[{missing: {on: a, pulses: 3}}]", "@[0].missing.pulses: found '3', expected a list; write [3]"),
+    other("disturb", "[{missing: {on: a, pulses: [0]}}]", f"@[0].missing.pulses[0]: found '0', {TIMES}"),
+    # ---- the encoder
+    other("encoder", "1024", "@: found '1024', expected a map with the keys lines, start, index"),
+    other("encoder", "{lines: 0}", "@.lines: found '0', expected a whole number from 1 to 16777216"),
+    other("encoder", "{lines: 2, start: 02}", "@.start: found '02', expected 00, 10, 11 or 01"),
+    other("encoder", "{lines: 2, phase_error: 9 deg}", "@.phase_error: unknown key; allowed here: lines, start, index"),
+    other(
+        "encoder",
+        "{index: {width: 90 deg, at: 0 deg}}",
+        "@.index: an index needs the line count; add `lines: 1024` to the encoder",
+    ),
+    other(
+        "encoder",
+        "{lines: 4, index: {width: 90 rev, at: -1 deg}}",
+        "@.index.at: found '-1 deg', expected an angle that is not negative\n"
+        "@.index.width: found '90 rev', expected a number and a unit for an angle: deg (electrical degrees)",
+    ),
+    # As wide as the revolution it would never go away, and its edges would come in the wrong order.
+    other(
+        "encoder",
+        "{lines: 2, index: {width: 720 deg, at: 0 deg}}",
+        "@.index: the width 720 deg is no less than the whole revolution of 720 deg",
+    ),
+    # ---- the rest
+    other("seed", "-1", "@: found '-1', expected a whole number from 0 to 9223372036854775807"),
+    other("seed", "1.5", "@: found '1.5', expected a whole number from 0 to 9223372036854775807"),
+    other("needs", "count", "@: found 'count', expected a list; write [count]"),
+    other(
+        "needs",
+        "[cuont]",
+        "@[0]: found 'cuont', expected count, direction, step, error, sticky-error, clear-error, index, reset, no-reset or filter"
+        " (did you mean 'count'?)",
+    ),
+    other("power_up", "1", "@: found '1', expected false or true"),
+    other("about", "", "@: found nothing, expected a value"),
+    other("profle", "x", f"@: unknown key; allowed here: {TOP_KEYS} (did you mean 'profile'?)"),
+    pytest.param(
+        "motion: [{rest: 1 us}]\n",
+        "1: the key 'profile' is missing; write for example `profile: spindle-reversal`",
+        id="no name",
+    ),
+    pytest.param("profile: x\n", "1: the key 'motion' is missing; write for example `motion: [{rest: 10 us}]`", id="no motion"),
+    pytest.param(
+        "profile: ../x\nmotion: [{rest: 1 us}]\n",
+        "1: profile: found '../x', expected up to 64 letters, digits and . _ - that start with a letter or digit",
+        id="name",
+    ),
+    pytest.param("", "1: the profile is empty", id="empty"),
+    pytest.param("[]", f"1: found a list, expected a map with the keys {TOP_KEYS}", id="list"),
+    # Several problems come together, in the order of their lines.
+    pytest.param(
+        "profile: p\nseed: x\nmotion:\n  - rest: 1\n  - mvoe: {}\n  - move: {by: 1}\n",
+        "2: seed: found 'x', expected a whole number from 0 to 9223372036854775807\n"
+        f"4: motion[0].rest: found '1', {TIME}\n"
+        f"5: motion[1].mvoe: unknown action; known: {ACTIONS} (did you mean 'move'?)\n"
+        f"6: motion[2].move.by: found '1', {DISTANCE}\n"
+        "6: motion[2].move: the key 'speed' is missing; write for example `speed: 3000 rpm`",
+        id="many",
+    ),
+]
+
+
+@pytest.mark.parametrize(("content", "expected"), CASES)
+def test_refusal(refusal: Callable[..., str], content: str, expected: str) -> None:
+    assert refusal(read_profile, content) == "\n".join(f"x.yaml:{line}" for line in expected.split("\n"))
