@@ -24,9 +24,9 @@ from importlib import metadata
 from pathlib import Path
 
 from tbkit import __version__
-from tbkit.contract import Contract, Design
+from tbkit.contract import BENCH, Contract, Design
 from tbkit.errors import SimulatorError
-from tbkit.render import BENCH, render_bench
+from tbkit.render import render_bench
 from tbkit.simulators import Simulator
 from tbkit.stimulus import Stimulus
 

@@ -9,6 +9,9 @@ from __future__ import annotations
 from dataclasses import dataclass, field
 from pathlib import Path
 
+#: Name of the module that the tool puts around a decoder.
+BENCH = "tbkit_bench"
+
 #: Line states AB in the order in which A leads B.
 A_LEADS_B = ("00", "10", "11", "01")
 

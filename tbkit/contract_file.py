@@ -12,6 +12,7 @@ from typing import TypeVar
 from tbkit import units
 from tbkit.contract import (
     A_LEADS_B,
+    BENCH,
     Clock,
     Constant,
     Contract,
@@ -131,13 +132,21 @@ class _Reader:
         folders = section.get("include_dirs")
         parameters = section.get("parameters")
         return Design(
-            top.identifier() if top else "",
-            tuple(path for item in sources.items() for path in self._sources(item)) if sources else (),
+            self._top(top) if top else "",
+            # A file that two of them name is compiled once.
+            tuple(dict.fromkeys(path for item in sources.items() for path in self._sources(item))) if sources else (),
             tuple(self._folder(item) for item in folders.items()) if folders else (),
             tuple(self._parameter(name, value) for name, value in parameters.pairs("a map of parameter names and values"))
             if parameters
             else (),
         )
+
+    @staticmethod
+    def _top(entry: Entry) -> str:
+        name = entry.identifier()
+        if name == BENCH:
+            entry.problem(f"the module that tbkit puts around the decoder is called {BENCH!r}; choose another name")
+        return name
 
     def _sources(self, entry: Entry) -> list[Path]:
         def read(text: str) -> list[Path]:
@@ -401,8 +410,14 @@ class _Reader:
             return Latency(none, none, none, none, none, none)
         section = entry.section(("count", "direction", "step", "error", "index", "clear"))
         given = {key: _span(value) for key in section.keys if (value := section.get(key))}
-        if not {"count", "step"} & given.keys() and entry.sound:
-            entry.problem("the key 'count' is missing; write for example `count: 3` (the key 'step' where there is no count)")
+        for key in given:
+            value = section.get(key)
+            anything = self.top.get("count") or self.top.get("step")
+            if value and anything and key != "clear" and self.top.get(key) is None:
+                value.problem(f"the decoder file has no `{key}`, so nothing has this latency; add that, or take this away")
+        needed = "count" if self.top.get("count") or not self.top.get("step") else "step"
+        if needed not in given and entry.sound:
+            entry.problem(f"the key {needed!r} is missing; write for example `{needed}: 3`")
         main = given.get("count", given.get("step", Span(0, 0)))
         direction, step, error, index = (given.get(key, main) for key in ("direction", "step", "error", "index"))
         return Latency(main, direction, step, error, index, given.get("clear", Span(1, 1)))

@@ -85,10 +85,14 @@ class _Path:
     def piece(self, by: Fraction, time_ps: int, speed: float, accel: float) -> None:
         """A segment that covers ``by`` in ``time_ps`` with the given start speed and acceleration."""
         self.travel += abs(by)
-        if self.travel > MOST_STATES:
+        self._check_travel(self.travel)
+        self._add(time_ps, self.at + by, speed, accel)
+
+    @staticmethod
+    def _check_travel(travel: Fraction) -> None:
+        if travel > MOST_STATES:
             msg = f"it covers more than {MOST_STATES} states"
             raise UnfitError(msg)
-        self._add(time_ps, self.at + by, speed, accel)
 
     def run(self, by: Fraction, speed: Fraction) -> None:
         """Constant speed."""
@@ -189,6 +193,8 @@ class _Path:
         slow, fast = self.scale.per_time(action.slow), self.scale.per_time(action.fast)
         low, ratio = float(slow), float(fast) / float(slow)
         goal = self.travel + travel
+        # Said before the runs are drawn, which takes long.
+        self._check_travel(goal)
         while self.travel < goal:
             length = int(action.shortest + self.rng.random() * (action.longest - action.shortest + 1))
             sign = 1 if self.rng.random() < 0.5 else -1

@@ -12,11 +12,9 @@ from importlib import resources
 import jinja2
 
 from tbkit import __version__
-from tbkit.contract import Contract, Port
+from tbkit.contract import BENCH, Contract, Port
 from tbkit.stimulus import SIGNALS
 from tbkit.trace import fields, record_words
-
-BENCH = "tbkit_bench"
 
 
 def _environment() -> jinja2.Environment:
@@ -84,6 +82,7 @@ def _context(contract: Contract) -> dict[str, object]:
     period = contract.clock.period_ps
     return {
         "version": __version__,
+        "bench": BENCH,
         "signals": [{"name": name, "bit": bit} for bit, name in enumerate(SIGNALS)],
         "outputs": [{"name": field.name, "range": f"[{field.width - 1}:0] " if field.width > 1 else ""} for field in layout],
         "record": [sv_literal(0, spare), *record] if spare else record,

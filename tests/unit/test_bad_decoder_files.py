@@ -255,6 +255,11 @@ CASES = [
         "8: inputs.mode.value: found '0x8', expected a whole number from 0 to 7",
         inputs="{mode: {value: 0x8, width: 3}}",
     ),
+    case(
+        "constant-width",
+        "8: inputs.mode.width: found '65', expected a whole number from 1 to 64",
+        inputs="{mode: {value: 500, width: 65}}",
+    ),
     case("constant-without-value", "8: inputs.mode: the key 'value' is missing; write for example `value: 1`", inputs="{mode: {}}"),
     case(
         "constant-active-low",
@@ -368,6 +373,7 @@ CASES = [
     ),
     case(
         "index-without-count",
+        "6: latency.count: the decoder file has no `count`, so nothing has this latency; add that, or take this away\n"
         "8: index: the index action `zero` needs a `count` output",
         count=None,
         step="{port: step, kind: pulse}",
@@ -376,6 +382,22 @@ CASES = [
     case("illegal-word", "8: illegal: found 'hold', expected a map with the key count", illegal="hold"),
     case("illegal-empty", "8: illegal: the key 'count' is missing; write for example `count: hold`", illegal="{}"),
     # ---- latency, filter and the rest
+    case(
+        "latency-of-nothing",
+        "7: latency.error: the decoder file has no `error`, so nothing has this latency; add that, or take this away",
+        latency="{count: 3, error: 4}",
+    ),
+    case(
+        "latency-of-step-only",
+        "7: latency: the key 'count' is missing; write for example `count: 3`",
+        latency="{step: 3}",
+        step="{port: step, kind: pulse}",
+    ),
+    case(
+        "top-like-the-bench",
+        "2: decoder.top: the module that tbkit puts around the decoder is called 'tbkit_bench'; choose another name",
+        decoder="{top: tbkit_bench, sources: [d.v]}",
+    ),
     case("latency-backwards", "7: latency.count: the range [5, 3] runs backwards; write [3, 5]", latency="{count: [5, 3]}"),
     case(
         "latency-three",
@@ -387,7 +409,7 @@ CASES = [
     case("latency-negative", f"7: latency.count[1]: found '-1', expected {CLOCKS}", latency="{count: [3, -1]}"),
     case(
         "latency-empty",
-        "7: latency: the key 'count' is missing; write for example `count: 3` (the key 'step' where there is no count)",
+        "7: latency: the key 'count' is missing; write for example `count: 3`",
         latency="{}",
     ),
     case(

@@ -241,6 +241,10 @@ def test_refusals(monkeypatch: pytest.MonkeyPatch) -> None:
         return str(caught.value)
 
     assert refusal(move("50000001 states", "1 states/us")) == "it covers more than 50000000 states"
+    endless_walk = Walk(states(10**9), parse("1 states/us", "speed"), parse("1 states/us", "speed"), 1, 8)
+    monkeypatch.setattr(tbkit.motion, "MOST_SEGMENTS", 10)
+    assert refusal(endless_walk) == "it covers more than 50000000 states"
+    monkeypatch.undo()
     assert refusal(Dither(states(1), time("0.4 ps"), 1)) == "0.4 ps is no time at all for this decoder"
     assert refusal(Rest(time("1e30 s"))) == f"{10**30} s is longer than 1000000 s, the most that is simulated"
     too_long = "it takes longer than 1000000 s, the most that is simulated"
@@ -249,5 +253,5 @@ def test_refusals(monkeypatch: pytest.MonkeyPatch) -> None:
     assert refusal(move("1 states", "1 rpm", "1e-30 rev/s2")) == too_long
     # Repeats inside repeats soon ask for more than there is memory.
     monkeypatch.setattr(tbkit.motion, "MOST_SEGMENTS", 100)
-    endless = Repeat(10**6, (Repeat(10**6, (Rest(time("0 ns")),)),))
+    endless = Repeat(200, (Repeat(200, (Rest(time("0 ns")),)),))
     assert refusal(endless) == "it has more than 100 pieces of motion"

@@ -361,6 +361,7 @@ def test_missing_pulses() -> None:
             "20 pulses of 1.5 clocks do not fit into its run without touching",
         ),
     ],
+    ids=["states", "periods", "wait", "input", "need", "needs", "glitches"],
 )
 def test_refusals(make: Callable[[], Stimulus], expected: str) -> None:
     with pytest.raises(UnfitError) as caught:
