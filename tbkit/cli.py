@@ -135,10 +135,12 @@ def _verify(options: argparse.Namespace, console: Console, complain: Console) ->
 
 
 class _Progress:
-    """One line that says what is going on, on a terminal; nothing where the output is piped."""
+    """What is going on: one line that changes, on a terminal; a plain line for each stage where the output is piped."""
 
     def __init__(self, console: Console) -> None:
+        self._console = console
         self._status = console.status("starting") if console.is_terminal else None
+        self._stage = ""
 
     def __enter__(self) -> Self:
         if self._status:
@@ -149,9 +151,12 @@ class _Progress:
         if self._status:
             self._status.stop()
 
-    def __call__(self, text: str) -> None:
+    def __call__(self, stage: str, done: int | None = None) -> None:
         if self._status:
-            self._status.update(text)
+            self._status.update(stage if done is None else f"{stage}: {done}")
+        elif stage != self._stage:
+            self._console.print(stage, markup=False)
+        self._stage = stage
 
 
 def main(arguments: Sequence[str] | None = None) -> int:

@@ -104,6 +104,10 @@ def _print_kind(console: Console, contract: Contract, results: Results, kind: st
     console.print(f"    again     {repeat_command(contract, results, profile, own_profiles)}", style="cyan")
 
 
+def _profiles(many: int) -> str:
+    return f"{many} profile{'s' * (many != 1)}"
+
+
 def _times(many: int) -> str:
     return "once" if many == 1 else f"{many} times"
 
@@ -118,19 +122,18 @@ def _print_verdict(console: Console, results: Results, failed: Sequence[ProfileR
     match results.verdict:
         case "pass":
             text = Text.assemble(
-                ("PASS", "bold green"), f"  {len(ran)} profiles, {edges} edges, {compared} comparisons, no finding"
+                ("PASS", "bold green"), f"  {_profiles(len(ran))}, {edges} edges, {compared} comparisons, no finding"
             )
         case "fail":
-            text = Text.assemble(("FAIL", "bold red"), f"  {len(failed)} of {len(ran)} profiles found the decoder wrong")
+            text = Text.assemble(("FAIL", "bold red"), f"  {len(failed)} of {_profiles(len(ran))} found the decoder wrong")
         case _:
             text = Text.assemble(("ERROR", "bold red"), "  no verdict: nothing was compared, or the simulator failed")
     console.print(text)
     open_clocks = sum(profile.score.open_clocks for profile in ran if profile.score)
     clocks = sum(profile.clocks for profile in ran)
     if clocks:
-        console.print(
-            f"{100 * (1 - open_clocks / clocks):.1f} % of {clocks} clocks compared; the contract leaves the rest open", style="dim"
-        )
+        share = f"{100 * (1 - open_clocks / clocks):.1f} % of {clocks} clocks compared"
+        console.print(f"{share}; the rest is reset, or left open by the contract", style="dim")
     if not results.simulator.four_state:
         console.print(
             f"{results.simulator.name} has two-state logic: an output that would be X for ever cannot be seen here", style="dim"

@@ -21,6 +21,9 @@ from tbkit.simulators import Simulator
 from tbkit.stimulus import MOST_PERIODS, Stimulus, compile_stimulus
 from tbkit.trace import read_trace
 
+#: Told the stage, and how much of it is done if that can be counted.
+Progress = Callable[[str, int | None], None]
+
 
 @dataclass(frozen=True, slots=True)
 class ProfileResult:
@@ -96,24 +99,28 @@ def score(contract: Contract, stimulus: Stimulus, trace_file: Path) -> Score:
     return judge(contract, stimulus, expectation, rests(contract, stimulus, doubtful.astype(np.int64)), trace)
 
 
-def verify(contract: Contract, planned: Plan, simulator: Simulator, out: Path, progress: Callable[[str], None]) -> Results:
+def verify(contract: Contract, planned: Plan, simulator: Simulator, out: Path, progress: Progress) -> Results:
     """Play a plan on one simulator and judge it.
 
     Raises:
         SimulatorError: the decoder would not build.
     """
-    progress(f"building for {simulator}")
+    progress(f"building the bench for {simulator}", None)
     ready = bench.build(contract, simulator, out)
     folder = out / "run" / f"{contract.file.stem}-{simulator.name}"
     shutil.rmtree(folder, ignore_errors=True)
     many = len(planned.stimuli)
     played = bench.play(
-        ready, contract, planned.stimuli, folder, lambda done: progress(f"{done} of {many} profiles played on {simulator}")
+        ready,
+        contract,
+        planned.stimuli,
+        folder,
+        lambda done: progress(f"playing {many} profile{'s' * (many != 1)} on {simulator}", done),
     )
     results: list[ProfileResult] = []
     failure = played.failure
     for n, stimulus in enumerate(planned.stimuli):
-        progress(f"{n} of {many} profiles judged")
+        progress(f"judging {many} profile{'s' * (many != 1)}", n)
         common = (stimulus.seed, stimulus.edges, stimulus.periods)
         if n not in played.traces:
             reason = "the simulator failed before its end"

@@ -90,7 +90,7 @@ def main() -> None:
                 _compare(contract, simulator, folder, clocks)
 
 
-def _compare(contract, simulator, folder, clocks) -> None:  # noqa: ANN001  # see main
+def _compare(contract, simulator, folder, clocks) -> None:  # see main
     parts = []
     for part in range(4):
         path = folder / f"bench-{part}.yaml"
@@ -98,7 +98,7 @@ def _compare(contract, simulator, folder, clocks) -> None:  # noqa: ANN001  # se
         parts.append(read_profile(path))
     begin = time.perf_counter()
     planned = plan(contract, parts, seed=1)
-    results = verify(contract, planned, simulator, folder, lambda _: None)
+    results = verify(contract, planned, simulator, folder, lambda *_: None)
     ours = time.perf_counter() - begin
     assert results.verdict == "pass", results
     edges = sum(profile.edges for profile in results.profiles)

@@ -18,7 +18,7 @@ ORDER = (0b00, 0b10, 0b11, 0b01)  # A B while A leads
 
 
 @cocotb.test()
-async def plain(dut) -> None:  # noqa: ANN001  # any handle
+async def plain(dut) -> None:  # any handle
     job = json.loads(Path(os.environ["PLAIN_JOB"]).read_text("utf-8"))
     state, position, direction = 0, 0, 0
     expected = [(0, 0, 0)] * (LATENCY - 1)  # position, direction, error on their way through the decoder
