@@ -109,18 +109,18 @@ def verify(contract: Contract, planned: Plan, simulator: Simulator, out: Path, p
     ready = bench.build(contract, simulator, out)
     folder = out / "run" / f"{contract.file.stem}-{simulator.name}"
     shutil.rmtree(folder, ignore_errors=True)
-    many = len(planned.stimuli)
+    many = f"{len(planned.stimuli)} profile{'s' * (len(planned.stimuli) != 1)}"
     played = bench.play(
         ready,
         contract,
         planned.stimuli,
         folder,
-        lambda done: progress(f"playing {many} profile{'s' * (many != 1)} on {simulator}", done),
+        lambda done: progress(f"playing {many} on {simulator}", done),
     )
     results: list[ProfileResult] = []
     failure = played.failure
     for n, stimulus in enumerate(planned.stimuli):
-        progress(f"judging {many} profile{'s' * (many != 1)}", n)
+        progress(f"judging {many}", n)
         common = (stimulus.seed, stimulus.edges, stimulus.periods)
         if n not in played.traces:
             reason = "the simulator failed before its end"
