@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import shutil
+import tempfile
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from pathlib import Path
@@ -102,41 +103,41 @@ def score(contract: Contract, stimulus: Stimulus, trace_file: Path) -> Score:
 def verify(contract: Contract, planned: Plan, simulator: Simulator, out: Path, progress: Progress) -> Results:
     """Play a plan on one simulator and judge it.
 
+    The files of a run are taken away again unless the simulator failed.
+
     Raises:
         SimulatorError: the decoder would not build.
     """
     progress(f"building the bench for {simulator}", None)
     ready = bench.build(contract, simulator, out)
-    folder = out / "run" / f"{contract.file.stem}-{simulator.name}"
-    shutil.rmtree(folder, ignore_errors=True)
+    (out / "run").mkdir(exist_ok=True)
+    # A folder of its own, since another run of the same decoder may be under way.
+    folder = Path(tempfile.mkdtemp(prefix=f"{contract.file.stem}-{simulator.name}-", dir=out / "run"))
     many = f"{len(planned.stimuli)} profile{'s' * (len(planned.stimuli) != 1)}"
-    played = bench.play(
-        ready,
-        contract,
-        planned.stimuli,
-        folder,
-        lambda done: progress(f"playing {many} on {simulator}", done),
-    )
+    played = bench.play(ready, contract, planned.stimuli, folder, lambda done: progress(f"playing {many} on {simulator}", done))
     results: list[ProfileResult] = []
     failure = played.failure
     for n, stimulus in enumerate(planned.stimuli):
         progress(f"judging {many}", n)
-        common = (stimulus.seed, stimulus.edges, stimulus.periods)
-        if n not in played.traces:
-            reason = "the simulator failed before its end"
-            results.append(ProfileResult(stimulus.name, "not-run", *common, reason=reason))
-            continue
         try:
-            result = score(contract, stimulus, played.traces[n])
+            results.append(_judged(contract, stimulus, played.traces.get(n)))
         except SimulatorError as error:
             failure = failure or error
+            common = (stimulus.seed, stimulus.edges, stimulus.periods)
             results.append(ProfileResult(stimulus.name, "not-run", *common, reason=str(error)))
-            continue
-        if result.findings:
-            verdict, reason = "fail", ""
-        elif result.comparisons == 0:
-            verdict, reason = "empty", "nothing was compared: the contract leaves everything open that this profile does"
-        else:
-            verdict, reason = "pass", ""
-        results.append(ProfileResult(stimulus.name, verdict, *common, score=result, reason=reason))
+    if failure is None:
+        shutil.rmtree(folder)
     return Results(simulator, (*results, *planned.left_out), failure)
+
+
+def _judged(contract: Contract, stimulus: Stimulus, trace_file: Path | None) -> ProfileResult:
+    common = (stimulus.seed, stimulus.edges, stimulus.periods)
+    if trace_file is None:
+        return ProfileResult(stimulus.name, "not-run", *common, reason="the simulator failed before its end")
+    result = score(contract, stimulus, trace_file)
+    if result.findings:
+        return ProfileResult(stimulus.name, "fail", *common, score=result)
+    if result.comparisons == 0:
+        reason = "nothing was compared: the contract leaves everything open that this profile does"
+        return ProfileResult(stimulus.name, "empty", *common, score=result, reason=reason)
+    return ProfileResult(stimulus.name, "pass", *common, score=result)
