@@ -38,6 +38,11 @@ SLOWEST_CLOCKS_PER_SECOND = 10_000
 WORTH_A_PROCESS = 100_000
 LOG_LINES_SHOWN = 30
 
+#: Warnings about the decoder's instance in the bench: Icarus's two, then Verilator's.
+_MISFIT = re.compile(
+    r"warning: (Port \d+ \(\w+\) of \S+ expects \d+ bits, got \d+|parameter \S+ not found in \S+)"
+    r"|%Warning-WIDTH(?:EXPAND|TRUNC): \S+ ((?:In|Out)put port connection .*)"
+)
 _INCLUDE = re.compile(r'`include\s+"([^"\n]+)"')
 
 
@@ -105,6 +110,12 @@ def _shown(log: str) -> str:
     return "\n".join(f"  {line}" for line in lines)
 
 
+def _misfits(log: str) -> list[str]:
+    """What a compiler only warns of, and what would make a test of another decoder than was described."""
+    about_bench = [line for line in log.splitlines() if f"{BENCH}.sv:" in line]
+    return [match.group(1) or match.group(2) for line in about_bench if (match := _MISFIT.search(line))]
+
+
 def _included(sources: Sequence[Path], include_dirs: Sequence[Path]) -> list[Path]:
     """Files that the sources include, however deep, where they can be found."""
     found: list[Path] = []
@@ -161,6 +172,11 @@ def build(contract: Contract, simulator: Simulator, out: Path) -> Build:
         shutil.rmtree(work)
         what = f"took longer than {BUILD_SECONDS} s to build" if code is None else "could not build"
         msg = f"{simulator} {what} the decoder {design.top!r} of {contract.file}:\n{_shown(log)}"
+        raise SimulatorError(msg)
+    if misfits := _misfits(log):
+        shutil.rmtree(work)
+        listed = "\n".join(f"  {line}" for line in misfits)
+        msg = f"the decoder {design.top!r} is not as {contract.file} says; {simulator} found:\n{listed}"
         raise SimulatorError(msg)
     try:
         work.rename(folder)

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from bisect import bisect_left
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -31,21 +32,39 @@ class Release:
     Attributes:
         begin: first period in which it is asserted.
         end: first period in which it is not.
+        awake: the last period whose events may not be followed yet; ``end`` - 1 when the lines are at rest.
         how: ``rest`` (what the contract says about the start holds), ``moving``, ``index`` (the index sets the count) or
-            ``elsewhere`` (the contract says nothing).
+            ``elsewhere`` (the contract says nothing: the lines rest in another state, or the reset was too short).
     """
 
     begin: int
     end: int
+    awake: int
     how: str
 
 
 @dataclass(frozen=True, slots=True)
 class Activity:
-    """Every period in which a line that matters changes, ``raw`` as sampled and ``passed`` behind the filter."""
+    """Every period in which a line that matters changes.
 
+    Attributes:
+        lines: each line as sampled.
+        raw, passed: all of them, as sampled and behind the filter.
+    """
+
+    lines: tuple[Int64s, ...]
     raw: Int64s
     passed: Int64s
+
+    def known(self, period: int, passes: int) -> int:
+        """The first period, from ``period`` on, in which every line has a level that the filter surely passes."""
+        latest = period
+        for changes in self.lines:
+            run = int(np.searchsorted(changes, period, side="right")) - 1
+            while 0 <= run < len(changes) - 1 and int(changes[run + 1] - changes[run]) < passes:
+                run += 1
+                latest = max(latest, int(changes[run]))
+        return latest
 
 
 def releases(
@@ -58,15 +77,20 @@ def releases(
     found: list[Release] = []
     settle = contract.start.settle
     for begin, end in spans:
-        near = np.searchsorted(activity.raw, [end - settle, end + settle])
+        # What the filter holds after a reset is known once each line has had a level for as long as always passes.
+        near = np.searchsorted(activity.raw, [end - max(settle, contract.filter.passes), end + settle])
         event = int(np.searchsorted(events.period, end + settle))
-        if near[0] != near[1]:
+        still = near[0] == near[1]
+        if contract.reset is not None and end - begin < contract.reset.clocks:
+            how = "elsewhere"
+        elif not still:
             how = "moving"
         elif _state_before(events, stimulus, event) not in contract.start.rest_states:
             how = "elsewhere"
         else:
             how = "index" if contract.start.count != 0 and end in index_active else "rest"
-        found.append(Release(begin, end, how))
+        awake = end - 1 if how == "rest" else activity.known(end + settle, contract.filter.passes)
+        found.append(Release(begin, end, awake, how))
     return found
 
 
@@ -98,6 +122,7 @@ class Cutter:
             breaks.append((0, 0, Open(0, 0, known=False)))
         epochs: list[Epoch] = []
         building: Epoch | None = None
+        resets = [r.begin for r in self.releases]
         for begin, end, cause in sorted(breaks, key=lambda item: item[:2]):
             if isinstance(cause, Release):
                 if building is not None:
@@ -108,7 +133,10 @@ class Cutter:
             after = end
             if building is not None:
                 if building.begin < begin + low - 1:
-                    epochs += self._closed(building, begin + low - 1, low)
+                    # A reset may come before the answer.
+                    reset = bisect_left(resets, begin)
+                    cut_short = resets[reset] - 1 if reset < len(resets) else self.periods
+                    epochs += self._closed(building, min(begin + low - 1, cut_short), low)
                 else:
                     # Begins before things were quiet again after the one before: both are one gap, unsure if either is.
                     after = max(end, building.begin - high)
@@ -135,13 +163,13 @@ class Cutter:
         end, settle = release.end, self.contract.start.settle
         if release.how == "rest":
             return self._open_ended(end, int(np.searchsorted(self.events.period, end + settle)), "start")
-        quiet, event = self._quiet(end + settle, low, high)
+        quiet, event = self._quiet(release.awake, low, high)
         allowed: tuple[int, ...] | None = None
         if release.how == "index" and self.contract.index is not None:
             allowed = (0, self.contract.start.count) if self.contract.index.edge else (0,)
             if int(np.searchsorted(self.events.period, end + settle)) != event:
                 allowed = None
-        elif release.how == "moving":
+        elif release.how == "moving" and release.awake == end + settle:
             allowed = self._after_motion(end, event)
         return self._open_ended(quiet, event, "adopt", allowed)
 

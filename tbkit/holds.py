@@ -43,21 +43,25 @@ def sticky_levels(
     ``clears``: (first period asserted, first period not asserted).
     """
     by, clear = contract.latency.error, contract.latency.clear
-    illegal = np.flatnonzero(events.illegal)
+    illegal = np.flatnonzero(events.illegal & ~events.open)
     unsure = [stretch for stretch in opens if not stretch.known]
     # First and last cause, first period it may act, first period it surely has, level (-1: unknown), event.
     rows = [(k, k, k + by.min, k + by.max, 1, n) for k, n in zip(events.period[illegal].tolist(), illegal.tolist(), strict=True)]
     rows += [(s.begin, s.end, s.begin + by.min, s.end + by.max, -1, -1) for s in unsure]
     sets = np.array(rows, dtype=np.int64).reshape(-1, 6)
+    cleared: list[tuple[int, ...]] = []
     for begin, end in clears:
         first, sure = begin + clear.min, end - 1 + clear.max
         # Set and clear together: which of them wins is not part of this contract.
-        together = bool(((sets[:, 3] >= first) & (sets[:, 2] <= sure)).any())
-        rows.append((begin, end - 1, first, sure, -1 if together else 0, -1))
-    acts = np.array(rows, dtype=np.int64).reshape(-1, 6)
+        together = (sets[:, 3] >= first) & (sets[:, 2] <= sure)
+        sets[together, 4] = -1
+        cleared.append((begin, end - 1, first, sure, -1 if together.any() else 0, -1))
+    acts = np.concatenate([sets, np.array(cleared, dtype=np.int64).reshape(-1, 6)])
     for r in released:
         # What happens during a reset is nothing; what was on its way when it began does not arrive.
         acts = acts[~((acts[:, 0] >= r.begin) & (acts[:, 1] < r.end))]
+        # Right after it some decoders are not awake yet.
+        acts[(acts[:, 0] >= r.end) & (acts[:, 0] <= r.awake) & (acts[:, 5] >= 0), 4] = -1
         acts[:, 3] = np.where((acts[:, 1] < r.begin) & (acts[:, 3] > r.begin), r.begin, acts[:, 3])
         acts = acts[~((acts[:, 1] < r.begin) & (acts[:, 2] >= r.begin))]
     steps = acts[:, 2:].tolist() + [[r.begin, r.end, 0 if r.how in ("rest", "index") else -1, -1] for r in released]

@@ -85,12 +85,13 @@ def filtered(sampled: Changes, rules: Filter) -> tuple[Changes, Doubt]:
     after = np.searchsorted(lasting, np.arange(len(begin)), side="left")
     against = level != level_before[after]
     short = length < rules.passes
+    free = short & (length > rules.rejects) & against
     if rules.bursts_open:
-        first = _bursts(length, against, short, rules.rejects)
-    else:
-        grey = np.flatnonzero(short & (length > rules.rejects) & against)
-        # A pulse that may pass leaves everything open up to the next level that lasts, which then brings a change or not.
-        first = grey[np.append(True, after[grey][1:] != after[grey][:-1])] if len(grey) else grey
+        # Only a single pulse is surely rejected; what comes of several with short gaps depends on how the filter adds up.
+        free |= short & np.append(short[1:], False)
+    free_at = np.flatnonzero(free)
+    # What may pass leaves everything open up to the next level that lasts, which then brings a change or not.
+    first = free_at[np.append(True, after[free_at][1:] != after[free_at][:-1])] if len(free_at) else free_at
     if len(first) == 0:
         return Changes(sampled.first, begin[passes]), _NO_DOUBT
     last = lasting[after[first]]
@@ -101,21 +102,6 @@ def filtered(sampled: Changes, rules: Filter) -> tuple[Changes, Doubt]:
         passing = np.append(np.where(length > rules.rejects, length, _NEVER), _NEVER)
         shortest = np.minimum.reduceat(passing, np.stack([before, last + 1], axis=1).ravel())[::2]
     return Changes(sampled.first, begin[passes]), Doubt(begin[first], begin[last], shortest)
-
-
-def _bursts(length: Int64s, against: Bools, short: Bools, rejects: int) -> Int64s:
-    """First runs of stretches of short pulses whose sum, as an integrating filter takes it, can exceed what is surely rejected."""
-    doubts: list[int] = []
-    edges = np.flatnonzero(np.diff(np.concatenate([[0], short.astype(np.int8), [0]])))
-    for first, after in edges.reshape(-1, 2).tolist():
-        total = highest = 0
-        for clocks, adds in zip(length[first:after].tolist(), against[first:after].tolist(), strict=True):
-            total = total + clocks if adds else max(0, total - clocks)
-            highest = max(highest, total)
-        # What is left over also shortens the way of the lasting level that follows.
-        if highest > rejects or (total and against[after]):
-            doubts.append(first)
-    return np.array(doubts, dtype=np.int64)
 
 
 def _count_table(contract: Contract) -> Int64s:
@@ -180,14 +166,15 @@ def _still(line: Changes, doubt: Doubt, begin: Int64s, end: Int64s) -> Bools:
 def _opens(contract: Contract, lines: _Lines) -> list[Open]:
     """Where a pulse the filter is free to pass, or a state too short to be followed, leaves the contract open."""
     opens: list[Open] = []
-    reach = contract.shortest_state - 1
+    # Where the latency has a range, a pulse that may pass can be seen that much longer than it lasts.
+    reach = contract.shortest_state - 1 + contract.latency.count.max - contract.latency.count.min
     for other, doubt_other, doubt in ((lines.b, lines.doubt_b, lines.doubt_a), (lines.a, lines.doubt_a, lines.doubt_b)):
         # With the other line still this long, the doubtful pulse is a legal there-and-back at most.
         known = _still(other, doubt_other, doubt.begin - reach, doubt.end + reach)
         known &= doubt.shortest >= contract.shortest_state
         if contract.index is not None:
             off = lines.index.level(doubt.begin) == 0
-            known &= off & _still(lines.index, lines.doubt_index, doubt.begin, doubt.end)
+            known &= off & _still(lines.index, lines.doubt_index, doubt.begin - reach, doubt.end + reach)
         opens += [Open(*row) for row in zip(doubt.begin.tolist(), doubt.end.tolist(), known.tolist(), strict=True)]
     if contract.index is not None:
         doubt = lines.doubt_index
@@ -197,7 +184,7 @@ def _opens(contract: Contract, lines: _Lines) -> list[Open]:
             (lines.b, lines.doubt_b, contract.index.b),
         ):
             if level is not None:
-                shut = (line.level(doubt.begin) != level) & _still(line, doubt_line, doubt.begin, doubt.end)
+                shut = (line.level(doubt.begin) != level) & _still(line, doubt_line, doubt.begin - reach, doubt.end + reach)
                 matters &= ~shut
         opens += [
             Open(begin, end, False) for begin, end in zip(doubt.begin[matters].tolist(), doubt.end[matters].tolist(), strict=True)
@@ -212,11 +199,12 @@ def _unordered(contract: Contract, events: Events) -> list[Open]:
     latency, gate = contract.latency, contract.index
     if gate is None:
         return []
-    apart = max(latency.index.max - latency.count.min, latency.count.max - latency.index.min)
-    turning = events.enters_index if gate.edge else events.enters_index | events.leaves_index
-    acting = np.flatnonzero((events.step != 0) | turning)
-    period, turning = events.period[acting], turning[acting]
-    close = np.flatnonzero((np.diff(period) <= apart) & (turning[1:] | turning[:-1]))
+    acting = np.flatnonzero((events.step != 0) | events.enters_index)
+    period, zeroed, stepped = events.period[acting], events.enters_index[acting], events.step[acting] != 0
+    never = np.iinfo(np.int64).max // 4
+    earliest = period + np.minimum(np.where(zeroed, latency.index.min, never), np.where(stepped, latency.count.min, never))
+    latest = period + np.maximum(np.where(zeroed, latency.index.max, 0), np.where(stepped, latency.count.max, 0))
+    close = np.flatnonzero((latest[:-1] >= earliest[1:]) & (zeroed[1:] | zeroed[:-1]))
     return [Open(int(period[n]), int(period[n + 1]), False) for n in close]
 
 
@@ -267,6 +255,7 @@ def expect(contract: Contract, stimulus: Stimulus) -> Expectation:
     spans = _asserted(stimulus, "reset") if contract.reset else [(0, 0)] if stimulus.power_up else []
     names = ("a", "b", "index") if contract.index is not None else ("a", "b")
     activity = Activity(
+        tuple(sampled[name].period for name in names),
         np.unique(np.concatenate([sampled[name].period for name in names])),
         np.unique(np.concatenate([lines.a.period, lines.b.period, lines.index.period])),
     )

@@ -22,6 +22,8 @@ from tbkit.trace import Series, Trace
 
 #: Findings of one kind that are kept with all detail; the rest are counted.
 KEPT_PER_KIND = 10
+#: An output that is off by more clocks than this is not called late or early, but lost and come from elsewhere.
+MOST_OFF = 4
 
 
 @dataclass(slots=True)
@@ -152,10 +154,11 @@ def _due_counts(contract: Contract, events: Events, epoch: Epoch, base: int) -> 
     before = np.concatenate([[base], value[:-1]]).astype(np.int64) if len(value) else value
     by_count, by_index = contract.latency.count, contract.latency.index
     period = events.period[chosen]
-    # A count that the index holds at 0 is let go when the index is seen to have ended.
+    # A count that the index holds at 0 is let go when the index is seen to have ended, but before the next step.
     slowly = leaves & (contract.index is not None and not contract.index.edge)
+    let_go = np.minimum(max(by_count.max, by_index.max), np.append(np.diff(period), by_index.max + 1) + by_count.min - 1)
     earliest = period + np.where(zero, by_index.min, by_count.min)
-    latest = period + np.where(zero, by_index.max, np.where(slowly, max(by_count.max, by_index.max), by_count.max))
+    latest = period + np.where(zero, by_index.max, np.where(slowly, np.maximum(let_go, by_count.max), by_count.max))
     # Counted first, zeroed a little later: the step alone may be seen on the way.
     on_the_way = events.enters_index[chosen] & zero & (step != 0) & _apart(contract)
     earliest = np.where(on_the_way, period + min(by_count.min, by_index.min), earliest)
@@ -205,7 +208,7 @@ def _count(book: _Book, expectation: Expectation, rests: Rests, series: Series) 
             matched.append(event[by_step])
             shown = len(when)
         else:
-            right, shown = _walk(book, due, when.tolist(), value.tolist(), seen)
+            right, shown = _compare(book, due, when.tolist(), value.tolist(), seen, base)
             periods.append(np.array([clock for clock, _ in right], dtype=np.int64))
             matched.append(np.array([event for _, event in right], dtype=np.int64))
         # What a fault has left behind is carried along, so that it is found once.
@@ -261,6 +264,28 @@ def _exactly(due: _Due, when: Int64s, value: Int64s) -> bool:
         and (when <= due.latest[:many]).all()
         and due.optional[many:].all()
     )
+
+
+def _compare(book: _Book, due: _Due, when: list[int], value: list[int], seen: int, base: int) -> tuple[list[tuple[int, int]], int]:
+    """Name what differs; the same values at other times are late or early, whatever else they could be taken for."""
+    many = len(when)
+    if seen != base or many != len(due.value) or (np.array(value) != due.value).any():
+        return _walk(book, due, when, value, seen)
+    limits = zip(due.earliest.tolist(), due.latest.tolist(), strict=True)
+    off = [
+        clock - latest if clock > latest else min(clock - earliest, 0)
+        for clock, (earliest, latest) in zip(when, limits, strict=True)
+    ]
+    if max(map(abs, off)) > MOST_OFF:
+        return _walk(book, due, when, value, seen)
+    right: list[tuple[int, int]] = []
+    for clock, by, event in zip(when, off, due.event.tolist(), strict=True):
+        book.saw_latency(clock - int(book.events.period[event]))
+        if by:
+            book.note_time("late" if by > 0 else "early", "count", clock, event, clock - by)
+        else:
+            right.append((clock, event))
+    return right, many
 
 
 def _walk(book: _Book, due: _Due, when: list[int], value: list[int], seen: int) -> tuple[list[tuple[int, int]], int]:
@@ -341,10 +366,11 @@ def _extra_kind(book: _Book, now: int, target: int, found: int, clock: int) -> s
     contract = book.contract
     count = contract.count
     assert count is not None
-    if found == 0 and contract.index is not None and _index_near(book, clock):
-        return "index-false"
     off = (found - target) % count.size
     off = min(off, count.size - off)
+    far = min((found - now) % count.size, (now - found) % count.size) > 2
+    if found == 0 and contract.index is not None and (far or _index_near(book, clock)):
+        return "index-false"
     wraps = abs(target - now) > 1 or (count.overflow == "hold" and now in (count.lowest, count.highest))
     if wraps or (off >= 4 and off & (off - 1) == 0) or (abs(found - now) > 2 and found in (count.lowest, count.highest)):
         return "roll-over-wrong"
@@ -426,6 +452,16 @@ def _levels(book: _Book, output: str, series: Series, hold: Hold) -> None:
         level, event = int(hold.level[n]), int(hold.event[n])
         at_once = int(series.value[first[n]]) != level
         clock = int(hold.begin[n]) if at_once else int(series.period[first[n] + 1])
+        if last[n] == first[n] + 1:
+            # It has the right level for the rest of the time, or up to shortly before the next one is due.
+            change = int(series.period[last[n]])
+            if at_once and event >= 0 and change - clock <= MOST_OFF:
+                book.note_time("late", output, change, event, clock)
+                continue
+            follows = n + 1 < len(hold.begin) and int(hold.level[n + 1]) != level and int(hold.event[n + 1]) >= 0
+            if not at_once and follows and 0 < int(hold.end[n]) - change <= MOST_OFF:
+                book.note_time("early", output, change, int(hold.event[n + 1]), int(hold.end[n]))
+                continue
         if output == "direction":
             kind = "direction-wrong"
         elif level == 1:
@@ -461,7 +497,7 @@ def _pulses(
         seen = ups[np.searchsorted(ups, begin) : np.searchsorted(ups, epoch.end, side="right")]
         if output == "step":
             # While the index holds the count at 0, a decoder may give a step for a motion or not.
-            free = events.zero[due]
+            free = _spread(events.zero[due], events.period[due], latency)
             may, wants = (_in_window(seen, events.period[chosen], latency) for chosen in (due[free], due[~free]))
             seen = seen[wants | ~may]
             due = due[~free]
@@ -485,6 +521,14 @@ def _pulses(
     return np.concatenate(right_period), np.concatenate(right_event)
 
 
+def _spread(free: Bools, causes: Int64s, latency: Span) -> Bools:
+    """What is free makes those free whose answers can be taken for its own."""
+    if len(free) == 0:
+        return free
+    begins = np.concatenate([[True], np.diff(causes) > latency.max - latency.min])
+    return np.asarray(np.logical_or.reduceat(free, np.flatnonzero(begins))[np.cumsum(begins) - 1])
+
+
 def _in_window(clocks: Int64s, causes: Int64s, latency: Span) -> Bools:
     """Whether each clock can be the answer to one of the causes."""
     first = np.searchsorted(causes, clocks - latency.max, side="left")
@@ -496,6 +540,13 @@ def _walk_pulses(
     book: _Book, output: str, at: Int64s, due: list[int], seen: list[int], latency: Span, must: int
 ) -> list[tuple[int, int]]:
     """Follow the pulses one by one; of the due ones only the first ``must`` have to be seen."""
+    if len(due) == len(seen) == must:
+        off = np.array(seen) - np.clip(seen, at + latency.min, at + latency.max)
+        if np.abs(off).max() <= MOST_OFF:
+            for clock, by, event in zip(seen, off.tolist(), due, strict=True):
+                if by:
+                    book.note_time("late" if by > 0 else "early", output, clock, event, clock - by)
+            return [(clock, event) for clock, by, event in zip(seen, off.tolist(), due, strict=True) if not by]
     missed, false = ("error-missed", "error-false") if output == "error" else ("step-wrong", "step-wrong")
     right: list[tuple[int, int]] = []
     earliest, latest = (at + latency.min).tolist(), (at + latency.max).tolist()

@@ -132,11 +132,12 @@ def _origins(
     contract: Contract, stimulus: Stimulus, since_ps: Int64s, counted: Int64s, gated: Int64s, quiet_ps: int
 ) -> list[_Origin]:
     origins: list[_Origin] = []
-    asserted, releases = _resets(stimulus) if contract.reset else ([], [0] if stimulus.power_up else [])
-    origins += [_Origin(time, None, 0) for time in asserted]
+    releases = _resets(stimulus) if contract.reset else [(0, 0)] if stimulus.power_up else []
+    origins += [_Origin(begin, None, 0) for begin, _ in releases]
     moves = np.concatenate([stimulus.lines["a"].toggles_ps, stimulus.lines["b"].toggles_ps])
-    for time in releases:
+    for begin, time in releases:
         near = bool(((moves > time - quiet_ps) & (moves < time + quiet_ps)).any())
+        near |= contract.reset is not None and time - begin < contract.reset.clocks * stimulus.period_ps
         at = int(np.searchsorted(since_ps, time, side="right")) - 1
         # The state is read from the shaft; if the lines lie, the run is lost anyway.
         state = A_LEADS_B[int(_place(stimulus, at)) % 4]
@@ -154,11 +155,11 @@ def _origins(
     return origins
 
 
-def _resets(stimulus: Stimulus) -> tuple[list[int], list[int]]:
-    """When reset is asserted, and when it is released."""
+def _resets(stimulus: Stimulus) -> list[tuple[int, int]]:
+    """When reset is asserted and released, each time."""
     line = stimulus.drives["reset"]
-    toggles = line.toggles_ps.tolist()
-    return toggles[line.first :: 2], toggles[1 - line.first :: 2]
+    toggles = [0, *line.toggles_ps.tolist()] if line.first else line.toggles_ps.tolist()
+    return list(zip(toggles[::2], toggles[1::2], strict=False))
 
 
 def _place(stimulus: Stimulus, at: int) -> int:

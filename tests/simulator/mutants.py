@@ -662,6 +662,15 @@ MUTANTS = (
         ("count-lost",),
         "F11: with unequal states, A and B one clock apart, a count is lost although each line is long enough",
     ),
+    Mutant(
+        "index-caught-between-clocks",
+        "wide_32.v",
+        "  always @(posedge clk) begin\n    meta <= {~mark_n, a, b};\n",
+        "  reg flag = 0, flag_before = 0;\n  always @(negedge mark_n) flag <= ~flag;\n  always @(posedge clk) begin\n"
+        "    flag_before <= flag;\n    meta <= {~mark_n | (flag ^ flag_before), a, b};\n",
+        ("index-false",),
+        "F16: an index pulse that no clock edge sees is taken for an index",
+    ),
 )
 
 # Faults that the built-in regression does not find, each with the reason.
@@ -674,15 +683,6 @@ UNSEEN = (
         "  always @(posedge clk) if (idle == 12'd4000) count <= 0; else begin\n    a_seen",
         ("count-wrong", "count-extra"),
         "F32: the count is lost after four thousand clocks of rest",
-    ),
-    Mutant(
-        "index-caught-between-clocks",
-        "wide_32.v",
-        "  always @(posedge clk) begin\n    meta <= {~mark_n, a, b};\n",
-        "  reg flag = 0, flag_before = 0;\n  always @(negedge mark_n) flag <= ~flag;\n  always @(posedge clk) begin\n"
-        "    flag_before <= flag;\n    meta <= {~mark_n | (flag ^ flag_before), a, b};\n",
-        ("index-false",),
-        "F16: an index pulse that no clock edge sees is taken for an index",
     ),
     Mutant(
         "carry-lost-in-a-wide-count",

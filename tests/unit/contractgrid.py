@@ -31,7 +31,7 @@ def span(clocks: int | tuple[int, int]) -> Span:
     return Span(clocks, clocks) if isinstance(clocks, int) else Span(*clocks)
 
 
-def contract(  # noqa: PLR0913
+def contract(
     latency: int | tuple[int, int] = 2,
     *,
     name: str = "x",
@@ -197,6 +197,19 @@ def _grid() -> dict[str, tuple[Contract, tuple[Build, ...]]]:
         contract((2, 4), filtering=Filter(0, 3), shortest=3, error="sticky", clear=True, reset="none", apart={"clear": (1, 3)}),
         *(Build("poll", 3, seed=seed) for seed in range(3)),
     )
+    add(
+        "dead-time-5",
+        contract((2, 6), shortest=5, filtering=Filter(0, 5, bursts_open=True)),
+        Build("dead-time", 5),
+        Build("dead-time", 5, warm=3, seed=1),
+    )
+    # A line that is late by its dead time must not be overtaken by the other one, hence the shortest state.
+    add(
+        "dead-time-3",
+        contract((1, 3), shortest=3, filtering=Filter(0, 3, bursts_open=True), index=Index(1, 1)),
+        Build("dead-time", 3),
+    )
+    add("majority", contract(4, filtering=Filter(1, 2, bursts_open=True), index=Index(0, 0)), Build("majority", 2, warm=4))
     # What follows an illegal transition.
     add("any", contract(2, illegal_holds=False), *plain, Build(seed=5))
     add("any-index", contract(2, illegal_holds=False, index=gated, direction="always", step=False))

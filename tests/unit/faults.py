@@ -70,7 +70,7 @@ def _narrow(contract: Contract) -> bool:
 
 
 def _reset(contract: Contract, _: Build) -> bool:
-    return contract.reset is not None
+    return contract.reset is not None and len(contract.start.rest_states) == 4
 
 
 def _equal(contract: Contract, build: Build) -> bool:
@@ -95,8 +95,8 @@ FAULTS = {
     ),
     "not-mirrored": _fault({"count-lost", "count-extra", "roll-over-wrong"}, lambda c, b: _count(c, b) and not _x4(c, b)),
     "backwards": _fault({"count-wrong", "roll-over-wrong"}, lambda c, b: _count(c, b) and c.count.size > 2),
-    "swapped": _fault({"count-wrong", "direction-wrong"}, lambda c, b: _count(c, b)),
-    "never": _fault({"no-response", "error-missed"}, lambda c, b: _outputs(c)),
+    "swapped": _fault({*COUNTING, "direction-wrong"}, _count),
+    "never": _fault({"no-response", "error-missed"}, lambda c, _: _outputs(c)),
     "later": _fault({"late"}, _exact),
     "earlier": _fault({"early"}, lambda c, b: _exact(c, b) and c.latency.count.min > c.filter.passes - 1),
     "skewed-lines": _fault({"late", *COUNTING, "step-wrong", "error-missed"}, _exact),
@@ -141,7 +141,7 @@ FAULTS = {
     "error-stuck": _fault({"error-stuck"}, _pulse),
     "error-long": _fault({"error-stuck"}, _pulse),
     "not-sticky": _fault({"error-missed"}, _sticky),
-    "clear-ignored": _fault({"error-stuck"}, lambda c, b: c.clear_error is not None),
+    "clear-ignored": _fault({"error-stuck"}, lambda c, _: c.clear_error is not None),
     "index-never": _fault({"index-missed"}, _index),
     "index-ungated": _fault({"index-false", "index-missed", "count-lost"}, _gate),
     "index-without-line": _fault({"index-false"}, _gate),

@@ -24,7 +24,8 @@ class Build:
 
     Attributes:
         filtering: ``equal`` (``depth`` equal samples), ``free`` (whatever is allowed), ``integrating``, ``poll`` (looks at
-            the lines every ``depth`` clocks).
+            the lines every ``depth`` clocks), ``dead-time`` (blind for ``depth`` clocks after a change), ``majority`` (of
+            three samples).
         depth: clocks.
         warm: clocks after reset in which the lines are followed without counting.
         vary: latencies are drawn anew for each event, within the declared range.
@@ -68,10 +69,13 @@ def sampled(line: Line, period_ps: int, periods: int) -> bytearray:
     return levels
 
 
-def filtered(
+def filtered(  # noqa: C901
     raw: bytearray, loads: bytearray, load_level: int | None, build: Build, passes: int, rejects: int, init: int, rng: random.Random
 ) -> bytearray:
-    """A line behind its filter, ``passes - 1`` clocks late (``poll``: not late); where ``loads`` is set it is loaded."""
+    """A line behind its filter, ``passes - 1`` clocks late (``poll`` and ``dead-time``: not late).
+
+    Where ``loads`` is set it takes the line's level, or ``load_level``.
+    """
     out = bytearray(len(raw))
     now, counted = init, 0
     if build.filtering == "poll":
@@ -82,6 +86,23 @@ def filtered(
             elif (k + phase) % build.depth == 0:
                 now = level
             out[k] = now
+        return out
+    if build.filtering == "dead-time":
+        blind = 0
+        for k, level in enumerate(raw):
+            if loads[k]:
+                now, blind = level if load_level is None else load_level, 0
+            elif blind:
+                blind -= 1
+            elif level != now:
+                now, blind = level, build.depth - 1
+            out[k] = now
+        return out
+    if build.filtering == "majority":
+        window = [now] * 3
+        for k, level in enumerate(raw):
+            window = [level] * 3 if loads[k] else [*window[1:], level]
+            out[k] = int(sum(window) > 1)
         return out
     if build.filtering == "free":
         last_load = -1
@@ -218,7 +239,7 @@ def run(contract: Contract, stimulus: Stimulus, build: Build, fault: str = "") -
             left -= 1
             loads[k] = 1
     rules = contract.filter
-    late = 0 if build.filtering == "poll" else rules.passes - 1
+    late = 0 if build.filtering in ("poll", "dead-time") else rules.passes - 1
     depth = {"filter-deeper": 1, "filter-shallower": -1}.get(fault, 0)
     shown = {}
     rest = contract.start.rest_states[0]
@@ -236,7 +257,7 @@ def run(contract: Contract, stimulus: Stimulus, build: Build, fault: str = "") -
     shift = {"later": 1, "earlier": -1}.get(fault, 0)
 
     def delay(span: Span, more: int = 0) -> _Delay:
-        if build.filtering == "poll":
+        if build.filtering in ("poll", "dead-time"):
             # The wait for the next look is the rest of the range.
             span = Span(span.min, span.min)
         return _Delay(Span(span.min + more, span.max + more), late, build.vary, rng)
@@ -342,15 +363,18 @@ def run(contract: Contract, stimulus: Stimulus, build: Build, fault: str = "") -
                 jump += rng.randint(-2, 2)
             # --- faults in counting
             turned = way in (1, -1) and last_way == -way
-            if fault == "lost-on-reversal" and turned and way == -1 and before == "11":
+            lost = {
+                "lost-on-reversal": turned and way == -1 and before == "11",
+                "lost-once": edges == 1024,
+                "lost-transition": before == "01" and state == "00",
+            }
+            doubled = {
+                "extra-on-reversal": turned and way == 1 and before == "10",
+                "by-two": before == "10" and state == "11",
+            }
+            if lost.get(fault):
                 step = 0
-            elif fault == "lost-once" and edges == 1024:
-                step = 0
-            elif fault == "lost-transition" and before == "01" and state == "00":
-                step = 0
-            elif fault == "extra-on-reversal" and turned and way == 1 and before == "10":
-                step *= 2
-            elif fault == "by-two" and before == "10" and state == "11":
+            elif doubled.get(fault):
                 step *= 2
             elif fault == "illegal-counts" and illegal:
                 step = 2
@@ -384,11 +408,12 @@ def run(contract: Contract, stimulus: Stimulus, build: Build, fault: str = "") -
             # --- direction
             if contract.direction is not None and way in (1, -1):
                 level = forward if way == 1 else 1 - forward
-                if fault == "direction-transition" and before == "10" and state == "11":
-                    level = 1 - level
-                elif fault == "direction-inverted":
-                    level = 1 - level
-                elif fault == "direction-after-reversal" and turned:
+                inverted = {
+                    "direction-transition": before == "10" and state == "11",
+                    "direction-inverted": True,
+                    "direction-after-reversal": turned,
+                }
+                if inverted.get(fault):
                     level = 1 - level
                 if fault in ("direction-stuck", "never"):
                     pass
@@ -401,7 +426,8 @@ def run(contract: Contract, stimulus: Stimulus, build: Build, fault: str = "") -
                 elif step or build.by_state:
                     out_direction.put(to_direction.due(k) + (1 if fault == "direction-late" else 0), level)
             # --- step
-            if contract.step is not None and true_step and fault != "never" and (not zero or build.step_at_zero):
+            pulses = true_step if contract.count is not None else step
+            if contract.step is not None and pulses and fault != "never" and (not zero or build.step_at_zero):
                 at = due if same_step else to_step.due(k)
                 if fault == "step-missing" and before == "11" and state == "01":
                     pass
@@ -412,9 +438,13 @@ def run(contract: Contract, stimulus: Stimulus, build: Build, fault: str = "") -
             # --- error
             wild_error = build.wild and hasty and rng.random() < 0.5
             raised = illegal or wild_error
-            if fault in ("error-never", "never") or (fault == "error-in-one-state" and before == "10"):
-                raised = False
-            elif fault == "error-second-missed" and illegal_before:
+            silent = {
+                "error-never": True,
+                "never": True,
+                "error-in-one-state": before == "10",
+                "error-second-missed": illegal_before,
+            }
+            if silent.get(fault):
                 raised = False
             elif fault == "error-on-reversal" and turned and state == "00":
                 raised = True
