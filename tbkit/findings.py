@@ -35,7 +35,7 @@ class Finding:
         clock: the clock period, as played.
         output: which output.
         expected, found: values, or words where there is no value.
-        states: the line states around it; the transition concerned stands in brackets.
+        states: the line states around it; the transition concerned stands in brackets, ``?`` where a pulse may have passed or not.
     """
 
     kind: str

@@ -295,6 +295,7 @@ def _walk(book: _Book, due: _Due, when: list[int], value: list[int], seen: int) 
     """
     contract = book.contract
     right: list[tuple[int, int]] = []
+    lost: list[tuple[str, int, int, int, int]] = []
     earliest, latest, steps = due.earliest.tolist(), due.latest.tolist(), due.step.tolist()
     absolute, optional, events = due.absolute.tolist(), due.optional.tolist(), due.event.tolist()
     apart = _apart(contract)
@@ -324,18 +325,19 @@ def _walk(book: _Book, due: _Due, when: list[int], value: list[int], seen: int) 
             e += 1  # nothing to be seen here (after an earlier fault, or at the end of a range that holds)
         elif e < len(events) and (c == len(when) or when[c] > latest[e]):
             is_next_due = e + 1 < len(events) and c < len(when) and when[c] >= earliest[e + 1]
-            if c < len(when) and value[c] == target and not is_next_due:
+            soon = c < len(when) and when[c] - latest[e] <= MOST_OFF
+            if soon and value[c] == target and not is_next_due:
                 book.note_time("late", "count", when[c], events[e], latest[e])
                 book.saw_latency(int(when[c] - periods[events[e]]))
                 now = value[c]
                 c += 1
             else:
-                kind = "index-missed" if absolute[e] else _lost_kind(contract, now, target)
-                book.note(kind, "count", latest[e], events[e], target, now)
+                kind = "index-missed" if absolute[e] else "count-lost" if abs(target - now) == 1 else ""
+                lost.append((kind, latest[e], events[e], target, now))
             e += 1
         elif e == len(events) or when[c] < earliest[e]:
             alone = e < len(events) and (c + 1 == len(when) or when[c + 1] > latest[e])
-            if alone and value[c] == target:
+            if alone and value[c] == target and earliest[e] - when[c] <= MOST_OFF:
                 book.note_time("early", "count", when[c], events[e], earliest[e])
                 e += 1
             else:
@@ -354,11 +356,11 @@ def _walk(book: _Book, due: _Due, when: list[int], value: list[int], seen: int) 
             book.note(kind, "count", when[c], events[e], target, value[c])
             now = value[c]
             e, c = e + 1, c + 1
+    # A decoder that loses counts elsewhere too loses them at the ends of its range for the same reason.
+    loses = book.totals["count-lost"] or any(kind == "count-lost" for kind, *_ in lost)
+    for kind, clock, event, target, now in lost:
+        book.note(kind or ("count-lost" if loses else "roll-over-wrong"), "count", clock, event, target, now)
     return right, e
-
-
-def _lost_kind(contract: Contract, now: int, target: int) -> str:
-    return "roll-over-wrong" if abs(target - now) > 1 and contract.count is not None else "count-lost"
 
 
 def _extra_kind(book: _Book, now: int, target: int, found: int, clock: int) -> str:
