@@ -6,14 +6,15 @@ READY := $(VENV)/.ready
 # pytest's own options, for example: make test PYTEST_ARGS='-k units'
 PYTEST_ARGS ?=
 
-.PHONY: demo test unit lint bench wheel clean help
+.PHONY: demo test unit soak lint bench wheel clean help
 
 help:
 	@echo 'make demo   set up, verify the example spindle decoder, then catch a planted fault'
 	@echo 'make test   set up, run every check and test'
 	@echo 'make unit   the tests that need no simulator'
+	@echo 'make soak   the tests that draw at random, for long'
 	@echo 'make lint   ruff and mypy'
-	@echo 'make bench  verified edges per second, beside a plain cocotb bench'
+	@echo 'make bench  stimulus and verified edges per second, the latter beside a plain cocotb bench'
 	@echo 'make wheel  build the package into dist/'
 
 $(READY): pyproject.toml
@@ -36,12 +37,16 @@ test: lint
 unit: $(READY)
 	$(BIN)/python -m pytest tests/unit $(PYTEST_ARGS)
 
+soak: $(READY)
+	TBKIT_SOAK=1 $(BIN)/python -m pytest -n auto tests/unit/test_oracles_bruteforce.py tests/simulator/test_right_decoders.py $(PYTEST_ARGS)
+
 lint: $(READY)
 	$(BIN)/ruff check .
 	$(BIN)/ruff format --check .
 	$(BIN)/mypy
 
 bench: $(READY)
+	$(BIN)/python tests/benchmark/stimulus.py
 	$(BIN)/python tests/benchmark/bench.py
 
 wheel: $(READY)

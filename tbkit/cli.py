@@ -9,14 +9,18 @@ from pathlib import Path
 from typing import Self
 
 from rich.console import Console
+from rich.markup import escape
 
 from tbkit import __version__, report
 from tbkit.contract_file import read_contract
-from tbkit.errors import InputError, Problem, SimulatorError
+from tbkit.errors import InputError, Problem, SimulatorError, UnfitError
+from tbkit.facts import fact_lines, facts
 from tbkit.profile import Profile
 from tbkit.profile_file import read_profile
 from tbkit.regression import builtin_profiles
 from tbkit.simulators import CHOICES, find
+from tbkit.stimulus import lay_out
+from tbkit.units import Scale
 from tbkit.verify import Results, plan, verify
 from tbkit.yamltree import nearest
 
@@ -54,7 +58,26 @@ def _parser() -> argparse.ArgumentParser:
     check.add_argument(
         "--only", action="append", default=[], metavar="NAME", help="run only this profile; may be given several times"
     )
+    plot = commands.add_parser(
+        "plot",
+        help="draw a motion profile, and tell what it asks of a decoder",
+        description="Tells what a profile asks of a decoder, and draws the shaft, and the lines from the whole run to one edge.",
+    )
+    plot.add_argument("profile", metavar="PROFILE", help="profile file (YAML), or the name of a built-in profile")
+    plot.add_argument("decoder", metavar="DECODER", type=Path, nargs="?", help="the decoder it is for: its units and its limits")
+    plot.add_argument(
+        "-o", "--output", type=_picture, metavar="FILE", help="where to draw it: .png or .svg; or .vcd for a wave viewer"
+    )
+    plot.add_argument("--seed", type=_seed, default=1, metavar="N", help="for everything that is random (default: 1)")
     return parser
+
+
+def _picture(text: str) -> Path:
+    path = Path(text)
+    if path.suffix in (".png", ".svg", ".vcd"):
+        return path
+    msg = f"{text!r} does not end in .png, .svg or .vcd"
+    raise argparse.ArgumentTypeError(msg)
 
 
 def _seed(text: str) -> int:
@@ -134,6 +157,52 @@ def _verify(options: argparse.Namespace, console: Console, complain: Console) ->
     return EXIT_INPUT if "error" in verdicts else EXIT_PASS
 
 
+def _plot(options: argparse.Namespace, console: Console) -> int:
+    problems: list[Problem] = []
+    contract, profile = None, None
+    try:
+        contract = read_contract(options.decoder) if options.decoder else None
+    except InputError as error:
+        problems += error.problems
+    try:
+        profile = _one_profile(options.profile)
+    except InputError as error:
+        problems += error.problems
+    if problems or profile is None:
+        raise InputError(problems)
+    scale = Scale.of(contract, profile.encoder.lines, profile.encoder.pitch)
+    try:
+        scenario = lay_out(profile, scale, options.seed if profile.seed is None else profile.seed, 0)
+    except UnfitError as error:
+        raise InputError([Problem(str(profile.file), 0, str(error))]) from error
+    rows = fact_lines(facts(scenario, contract), profile.encoder, contract)
+    console.print(f"[bold]{escape(profile.name)}[/]  {escape(profile.about)}")
+    width = max(len(name) for name, _ in rows)
+    for name, text in rows:
+        console.print(f"  {name:{width}}  {text}", markup=False)
+    if options.output:
+        # Drawing needs a large library, which nothing else does.
+        from tbkit import plot  # noqa: PLC0415
+
+        plot.write(profile, scenario, options.output)
+    return EXIT_PASS
+
+
+def _one_profile(name: str) -> Profile:
+    """A profile by its file, or a built-in one by its name.
+
+    Raises:
+        InputError: there is none, or the file has problems.
+    """
+    builtin = {profile.name: profile for profile in builtin_profiles()}
+    if Path(name).exists():
+        return read_profile(Path(name))
+    if name in builtin:
+        return builtin[name]
+    text = f"there is no such file and no built-in profile of that name; there are {', '.join(builtin)}{nearest(name, builtin)}"
+    raise InputError([Problem(name, 0, text)])
+
+
 class _Progress:
     """What is going on: one line that changes, on a terminal; a plain line for each stage where the output is piped."""
 
@@ -165,7 +234,7 @@ def main(arguments: Sequence[str] | None = None) -> int:
     console = Console(highlight=False, soft_wrap=True)
     complain = Console(stderr=True, highlight=False, soft_wrap=True)
     try:
-        return _verify(options, console, complain)
+        return _plot(options, console) if options.command == "plot" else _verify(options, console, complain)
     except InputError as error:
         for problem in error.problems:
             complain.print(f"{problem}" if problem.line else f"{problem.file}: {problem.text}", markup=False)

@@ -15,6 +15,7 @@ from tbkit.encoder import Line
 from tbkit.epochs import Activity, Cutter, Open, releases
 from tbkit.expectation import Bools, Events, Expectation, Int64s
 from tbkit.holds import direction_levels, sticky_levels
+from tbkit.ordered import merged
 from tbkit.stimulus import Stimulus
 
 _NEVER = np.iinfo(np.int64).max // 4
@@ -67,10 +68,11 @@ def sample(line: Line, period_ps: int) -> Changes:
     return Changes(line.first, period[last][changed])
 
 
-def filtered(sampled: Changes, rules: Filter) -> tuple[Changes, Doubt]:
+def filtered(sampled: Changes, rules: Filter, spread: int = 0) -> tuple[Changes, Doubt]:
     """What surely passes the filter, and where it is free to pass something or not.
 
-    A change that passes is placed where the lasting level began, since latency counts from there.
+    A change that passes is placed where the lasting level began, since latency counts from there. ``spread`` (clocks) is how
+    much later than the earliest one a change may come through.
     """
     begin = sampled.period
     if len(begin) == 0 or rules.passes == 1:
@@ -91,10 +93,16 @@ def filtered(sampled: Changes, rules: Filter) -> tuple[Changes, Doubt]:
         free |= short & np.append(short[1:], False)
     free_at = np.flatnonzero(free)
     # What may pass leaves everything open up to the next level that lasts, which then brings a change or not.
-    first = free_at[np.append(True, after[free_at][1:] != after[free_at][:-1])] if len(free_at) else free_at
-    if len(first) == 0:
+    if len(free_at) == 0:
         return Changes(sampled.first, begin[passes]), _NO_DOUBT
-    last = lasting[after[first]]
+    until = after
+    if rules.bursts_open and spread:
+        # Such a filter may still be busy with a burst when the next level begins, and take that level late, and the next
+        # one for that, until one lasts for so much longer: till then the line may be overtaken by the other one.
+        calm = np.flatnonzero(length[lasting] >= rules.passes + spread)
+        until = calm[np.searchsorted(calm, after, side="left")]
+    first = free_at[np.append(True, until[free_at][1:] != until[free_at][:-1])]
+    last = lasting[until[first]]
     if rules.bursts_open:
         shortest = np.ones(len(first), dtype=np.int64)
     else:
@@ -189,7 +197,7 @@ def _opens(contract: Contract, lines: _Lines) -> list[Open]:
         opens += [
             Open(begin, end, False) for begin, end in zip(doubt.begin[matters].tolist(), doubt.end[matters].tolist(), strict=True)
         ]
-    states = np.union1d(lines.a.period, lines.b.period)
+    states = merged(lines.a.period, lines.b.period)
     hasty = np.flatnonzero(np.diff(states) < contract.shortest_state)
     return opens + [Open(int(states[n]), int(states[n + 1]), False) for n in hasty]
 
@@ -209,7 +217,11 @@ def _unordered(contract: Contract, events: Events) -> list[Open]:
 
 
 def _filter_lines(contract: Contract, sampled: dict[str, Changes]) -> _Lines:
-    (a, doubt_a), (b, doubt_b), (z, doubt_z) = (filtered(sampled[name], contract.filter) for name in ("a", "b", "index"))
+    count = contract.latency.count
+    (a, doubt_a), (b, doubt_b), (z, doubt_z) = (
+        filtered(sampled[name], contract.filter, latency.max - latency.min)
+        for name, latency in (("a", count), ("b", count), ("index", contract.latency.index))
+    )
     if contract.index is None:
         z, doubt_z = Changes(0, _NONE), _NO_DOUBT
     return _Lines(a, b, z, doubt_a, doubt_b, doubt_z)
@@ -218,7 +230,7 @@ def _filter_lines(contract: Contract, sampled: dict[str, Changes]) -> _Lines:
 def make_events(contract: Contract, lines: _Lines, opens: list[Open]) -> Events:
     """Merge the filtered lines into events; ``opens``: where the contract leaves open what happens."""
     unsure = np.array([(stretch.begin, stretch.end) for stretch in opens if not stretch.known], dtype=np.int64).reshape(-1, 2)
-    period = np.unique(np.concatenate([lines.a.period, lines.b.period, lines.index.period, unsure[:, 0]]))
+    period = merged(lines.a.period, lines.b.period, lines.index.period, unsure[:, 0])
     after_a, after_b, after_z = (line.level(period) for line in (lines.a, lines.b, lines.index))
     before_a, before_b, before_z = (line.level(period - 1) for line in (lines.a, lines.b, lines.index))
     before, after = 2 * before_a + before_b, 2 * after_a + after_b
@@ -256,8 +268,8 @@ def expect(contract: Contract, stimulus: Stimulus) -> Expectation:
     names = ("a", "b", "index") if contract.index is not None else ("a", "b")
     activity = Activity(
         tuple(sampled[name].period for name in names),
-        np.unique(np.concatenate([sampled[name].period for name in names])),
-        np.unique(np.concatenate([lines.a.period, lines.b.period, lines.index.period])),
+        merged(*(sampled[name].period for name in names)),
+        merged(lines.a.period, lines.b.period, lines.index.period),
     )
     ends = np.array([end for _, end in spans], dtype=np.int64)
     index_on = _index_active(contract, lines.a.level(ends), lines.b.level(ends), lines.index.level(ends))

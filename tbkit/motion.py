@@ -1,42 +1,44 @@
-"""Motion: a profile's actions turned into shaft position over time, and the times at which it crosses a boundary.
+"""Motion: the shaft's position over time, and the times at which it passes given places.
 
-Position is in states; the shaft begins in the middle of its first state. On a boundary the shaft is in the upper state,
-so a turn exactly on a boundary enters that state and leaves it again. Time is whole ps at the ends of segments; inside a
-segment the position is a polynomial of the local time and floats are used.
+Position is in states and time in whole picoseconds at the ends of pieces; inside a piece the position is a cubic of the
+local time, and floats are used. Every piece is monotone. A place is passed on reaching it upwards and on leaving it
+downwards: on a boundary the shaft is in the upper state, so a turn exactly on a boundary enters that state and leaves it.
 """
 
 from __future__ import annotations
 
-from dataclasses import dataclass
-from fractions import Fraction
-from math import ceil, floor, sqrt
+from collections.abc import Callable, Iterator
+from dataclasses import dataclass, fields
+from typing import Any
 
 import numpy as np
 import numpy.typing as npt
 
-from tbkit.contract import A_LEADS_B
-from tbkit.errors import UnfitError
-from tbkit.profile import Action, Dither, Drive, Illegal, Move, Repeat, Rest, Reverse, Walk
-from tbkit.units import LONGEST_PS, PS_PER_S, Quantity, Scale
-
 Int64s = npt.NDArray[np.int64]
 Floats = npt.NDArray[np.float64]
+Bools = npt.NDArray[np.bool_]
 
-#: More states or pieces of motion than this in one profile are refused rather than left to eat the memory.
-MOST_STATES = 50_000_000
-MOST_SEGMENTS = 2_500_000
+#: Crossings solved at a time: bounds the memory of what is in between.
+CHUNK = 1 << 16
+#: A piece with this many crossings is solved by itself, which saves much.
+LONG_PIECE = 4096
+#: Points of the table that gives the first guess in a long curved piece.
+GRID = 1025
+_MOST_STEPS = 80
+_NEAR_PS = 0.01
 
 
 @dataclass(frozen=True, slots=True)
 class Motion:
-    """Shaft position in states, as quadratic segments one after another.
+    """Shaft position in states, as monotone cubic pieces one after another.
 
     Attributes:
-        start_ps: int64[n], start of each segment.
+        start_ps: int64[n], start of each piece.
         duration_ps: int64[n]; 0 is a jump.
         from_states, to_states: float64[n], positions at its ends.
         speed: float64[n], states/ps at its start.
-        accel: float64[n], states/ps².
+        accel: float64[n], states/ps² at its start.
+        jerk: float64[n], states/ps³.
         drives: (signal, start_ps, end_ps) of the inputs acted on.
         end_ps: end of the motion.
     """
@@ -47,6 +49,7 @@ class Motion:
     to_states: Floats
     speed: Floats
     accel: Floats
+    jerk: Floats
     drives: tuple[tuple[str, int, int], ...]
     end_ps: int
 
@@ -55,215 +58,170 @@ class Motion:
         return float(self.from_states[0])
 
 
-class _Path:
-    """Grows segment by segment; position is exact."""
+@dataclass(frozen=True, slots=True)
+class Places:
+    """Places at ``offset + pitch·n + error(n)`` states for every whole n, in rising order.
 
-    def __init__(self, scale: Scale, start_state: str, start_ps: int, rng: np.random.Generator) -> None:
-        self.scale = scale
-        self.rng = rng
-        self.now_ps = start_ps
-        self.at = A_LEADS_B.index(start_state) + Fraction(1, 2)
-        self.segments: list[tuple[int, int, float, float, float, float]] = []
-        self.drives: list[tuple[str, int, int]] = []
-        self.travel = Fraction(0)
-        # A motion always has one segment, so that a first position exists.
-        self.stand(0)
-
-    def stand(self, time_ps: int) -> None:
-        self._add(time_ps, self.at, 0.0, 0.0)
-
-    def _add(self, time_ps: int, end: Fraction, speed: float, accel: float) -> None:
-        if len(self.segments) >= MOST_SEGMENTS:
-            msg = f"it has more than {MOST_SEGMENTS} pieces of motion"
-            raise UnfitError(msg)
-        if self.now_ps + time_ps > LONGEST_PS:
-            msg = f"it takes longer than {LONGEST_PS // PS_PER_S} s, the most that is simulated"
-            raise UnfitError(msg)
-        self.segments.append((self.now_ps, time_ps, float(self.at), float(end), speed, accel))
-        self.at, self.now_ps = end, self.now_ps + time_ps
-
-    def piece(self, by: Fraction, time_ps: int, speed: float, accel: float) -> None:
-        """A segment that covers ``by`` in ``time_ps`` with the given start speed and acceleration."""
-        self.travel += abs(by)
-        self._check_travel(self.travel)
-        self._add(time_ps, self.at + by, speed, accel)
-
-    @staticmethod
-    def _check_travel(travel: Fraction) -> None:
-        if travel > MOST_STATES:
-            msg = f"it covers more than {MOST_STATES} states"
-            raise UnfitError(msg)
-
-    def run(self, by: Fraction, speed: Fraction) -> None:
-        """Constant speed."""
-        time_ps = max(1, round(abs(by) / speed))
-        self.piece(by, time_ps, float(by) / time_ps, 0.0)
-
-    def trapezoid(self, by: Fraction, speed: Fraction, accel: Fraction) -> None:
-        """Rest to rest with bounded acceleration; triangular when the distance is too short for the speed.
-
-        Standard closed form (Biagiotti & Melchiorri 2008, section 3.2): ramps of v/a, or of sqrt(h/a).
-        """
-        sign, length = (1 if by > 0 else -1), abs(by)
-        if length * accel <= speed * speed:
-            ramp_ps, ramp_by, cruise = max(1, round(sqrt(length / accel))), length / 2, Fraction(0)
-        else:
-            ramp_ps, ramp_by = max(1, round(speed / accel)), speed * speed / accel / 2
-            cruise = length - 2 * ramp_by
-        # The ramp's time is rounded to whole ps, so its acceleration is taken from the time: the distance stays exact.
-        slope = 2 * float(ramp_by) / ramp_ps**2
-        self.piece(sign * ramp_by, ramp_ps, 0.0, sign * slope)
-        if cruise:
-            self.run(sign * cruise, speed)
-        self.piece(sign * ramp_by, ramp_ps, sign * slope * ramp_ps, -sign * slope)
-
-    def act(self, action: Action) -> None:
-        match action:
-            case Rest():
-                self.stand(self.scale.time_ps(action.time))
-            case Move():
-                self.move(action)
-            case Reverse():
-                self.reverse(action)
-            case Dither():
-                self.dither(action)
-            case Illegal():
-                self.illegal(action)
-            case Walk():
-                self.walk(action)
-            case Drive():
-                self.drive(action)
-            case Repeat():
-                for _ in range(action.times):
-                    for inner in action.actions:
-                        self.act(inner)
-
-    def move(self, action: Move) -> None:
-        by, speed = self.scale.distance_states(action.by), self.scale.per_time(action.speed)
-        if action.accel is None:
-            self.run(by, speed)
-        else:
-            self.trapezoid(by, speed, self.scale.per_time(action.accel))
-
-    def dither(self, action: Dither) -> None:
-        by, time_ps = self.scale.distance_states(action.over), self._some_time(action.every)
-        for _ in range(action.times):
-            self.piece(by, time_ps, float(by) / time_ps, 0.0)
-            self.piece(-by, time_ps, -float(by) / time_ps, 0.0)
-
-    def illegal(self, action: Illegal) -> None:
-        half_ps = self._some_time(action.every) // 2
-        for _ in range(action.times):
-            self.stand(half_ps)
-            self.piece(Fraction(2), 0, 0.0, 0.0)
-            self.stand(half_ps)
-
-    def drive(self, action: Drive) -> None:
-        begin_ps, time_ps = self.now_ps, self._some_time(action.time)
-        if action.moving is None:
-            self.stand(time_ps)
-        else:
-            speed = self.scale.per_time(action.moving)
-            # Whole states, so that the motion still ends in the middle of a state, and not before the input is released.
-            self.run(Fraction(ceil(abs(speed) * time_ps)) * (1 if speed > 0 else -1), abs(speed))
-        self.drives.append((action.signal, begin_ps, begin_ps + time_ps))
-
-    def _some_time(self, quantity: Quantity) -> int:
-        time_ps = self.scale.time_ps(quantity)
-        if time_ps <= 0:
-            msg = f"{quantity} is no time at all for this decoder"
-            raise UnfitError(msg)
-        return time_ps
-
-    def reverse(self, action: Reverse) -> None:
-        sign = 1 if action.forward else -1
-        run, speed = self.scale.distance_states(action.run), self.scale.per_time(action.speed)
-        goal = A_LEADS_B.index(action.state) + Fraction(1, 2)
-        there = self.at + sign * run
-        # On to the next middle of that state.
-        there += sign * ((sign * (goal - there)) % 4)
-        self.run(there - self.at, speed)
-        for n in range(action.times):
-            self.run(-sign * run, speed)
-            if n + 1 < action.times:
-                self.run(sign * run, speed)
-
-    def walk(self, action: Walk) -> None:
-        travel = self.scale.distance_states(action.travel)
-        slow, fast = self.scale.per_time(action.slow), self.scale.per_time(action.fast)
-        low, ratio = float(slow), float(fast) / float(slow)
-        goal = self.travel + travel
-        # Said before the runs are drawn, which takes long.
-        self._check_travel(goal)
-        while self.travel < goal:
-            length = int(action.shortest + self.rng.random() * (action.longest - action.shortest + 1))
-            sign = 1 if self.rng.random() < 0.5 else -1
-            # Speeds are drawn evenly on a logarithmic scale: slow runs would else be rare.
-            self.run(Fraction(sign * length), Fraction(low * ratio ** self.rng.random()))
-
-
-def build_motion(actions: tuple[Action, ...], scale: Scale, start_state: str, start_ps: int, rng: np.random.Generator) -> Motion:
-    """Lay the actions one after another, starting at ``start_ps`` in the middle of ``start_state``.
-
-    Raises:
-        UnfitError: an action has no meaning for this decoder or encoder.
+    A reader that turns only after ``hysteresis`` states passes each place half of it later in either direction.
+    ``jitter`` (given how many) is added each time a place is passed, in states. It moves the passing within its piece of
+    motion only, and never before the one before it.
     """
-    path = _Path(scale, start_state, start_ps, rng)
-    for action in actions:
-        path.act(action)
-    start, duration, first, last, speed, accel = zip(*path.segments, strict=True)
-    return Motion(
-        np.array(start, dtype=np.int64),
-        np.array(duration, dtype=np.int64),
-        np.array(first),
-        np.array(last),
-        np.array(speed),
-        np.array(accel),
-        tuple(path.drives),
-        path.now_ps,
-    )
+
+    offset: float = 0.0
+    pitch: float = 1.0
+    error: Callable[[Int64s], Floats] | None = None
+    hysteresis: float = 0.0
+    jitter: Callable[[int], Floats] | None = None
+
+    def at(self, number: Int64s) -> Floats:
+        place: Floats = self.offset + self.pitch * number.astype(np.float64)
+        return place if self.error is None else place + self.error(number)
+
+    def below(self, position: Floats) -> Int64s:
+        """The number of the last place at or below each position."""
+        number = np.floor((position - self.offset) / self.pitch).astype(np.int64)
+        if self.error is not None:
+            # Errors may be many pitches, but change slowly: a few steps are enough.
+            while (low := self.at(number + 1) <= position).any():
+                number += low
+            while (high := self.at(number) > position).any():
+                number -= high
+        return number
 
 
 @dataclass(frozen=True, slots=True)
 class Crossings:
-    """Boundary crossings in order of time.
+    """Places passed, in order of time.
 
     Attributes:
         time_ps: int64[n].
-        number: int64[n], which boundary: position ``offset + pitch * number``.
-        up: bool[n], whether it was crossed towards larger positions.
+        number: int64[n], which place.
+        up: bool[n], whether it was passed towards larger positions.
     """
 
     time_ps: Int64s
     number: Int64s
-    up: npt.NDArray[np.bool_]
+    up: Bools
 
 
-def crossings(motion: Motion, offset: float = 0.0, pitch: float = 1.0) -> Crossings:
-    """When the shaft crosses the positions ``offset + pitch * n`` for every whole n, in states.
+def crossings(motion: Motion, places: Places | None = None) -> Crossings:
+    """When the shaft passes the places; without any, the boundaries between states."""
+    places = places or Places()
+    up = motion.to_states > motion.from_states
+    half = places.hysteresis / 2
+    reach = places.below(np.where(up, motion.to_states - half, motion.to_states + half))
+    first = places.below(motion.from_states[:1])
+    if half:
+        # What has been passed depends on all that went before: a play of `hysteresis` states.
+        at, passed = int(first[0]), []
+        for goes_up, place in zip(up.tolist(), reach.tolist(), strict=True):
+            at = max(at, place) if goes_up else min(at, place)
+            passed.append(at)
+        reach = np.array(passed, dtype=np.int64)
+    before = np.concatenate([first, reach[:-1]])
+    how_many = np.abs(reach - before)
+    ends = np.cumsum(how_many)
+    total = int(ends[-1])
+    found = Crossings(np.empty(total, np.int64), np.empty(total, np.int64), np.empty(total, np.bool_))
+    for low, high, piece in _batches(how_many, ends):
+        nth = np.arange(low, high)
+        # One long piece, whose numbers stay scalars, or many short ones, each crossing with its own.
+        of: Any = np.searchsorted(ends, nth, side="right") if piece is None else piece
+        goes_up = up[of]
+        left = ends[of] - nth  # places still to pass in this piece, this one included
+        number = np.where(goes_up, reach[of] - left + 1, reach[of] + left)
+        sign = np.where(goes_up, 1.0, -1.0)
+        distance = sign * (places.at(number) - motion.from_states[of]) + half
+        if places.jitter is not None:
+            distance += places.jitter(high - low)
+        whole = sign * (motion.to_states[of] - motion.from_states[of])
+        curve = _Curve(
+            whole,
+            motion.duration_ps[of].astype(np.float64),
+            sign * motion.speed[of],
+            sign * motion.accel[of],
+            sign * motion.jerk[of],
+        )
+        local = _solve(np.clip(distance, 0.0, whole), curve)
+        found.time_ps[low:high] = motion.start_ps[of] + np.rint(local).astype(np.int64)
+        found.number[low:high] = number
+        found.up[low:high] = goes_up
+    if places.jitter is not None:
+        np.maximum.accumulate(found.time_ps, out=found.time_ps)
+    return found
 
-    Every segment is monotone (a move starts or ends at rest), so each boundary is crossed at most once in it, at the root
-    of a quadratic; the form 2d/(v + sqrt(v² + 2ad)) loses no digits.
-    """
-    first = np.floor((motion.from_states - offset) / pitch).astype(np.int64)
-    last = np.floor((motion.to_states - offset) / pitch).astype(np.int64)
-    how_many = np.abs(last - first)
-    segment = np.repeat(np.arange(len(first)), how_many)
-    nth = np.arange(len(segment)) - np.repeat(np.cumsum(how_many) - how_many, how_many)
-    up = (last > first)[segment]
-    number = np.where(up, first[segment] + 1 + nth, first[segment] - nth)
-    distance = offset + pitch * number - motion.from_states[segment]
-    speed, accel = motion.speed[segment], motion.accel[segment]
-    duration = motion.duration_ps[segment]
-    sign = np.where(up, 1.0, -1.0)
-    root = np.sqrt(np.maximum(speed * speed + 2 * accel * distance, 0.0))
+
+def _batches(how_many: Int64s, ends: Int64s) -> Iterator[tuple[int, int, int | None]]:
+    """(low, high, piece) of the crossings to solve together: parts of a long piece, or of many short ones (None)."""
+    done = 0
+    for piece in [*np.flatnonzero(how_many >= LONG_PIECE).tolist(), None]:
+        begin = int(ends[-1] if piece is None else ends[piece] - how_many[piece])
+        for low in range(done, begin, CHUNK):
+            yield low, min(low + CHUNK, begin), None
+        if piece is not None:
+            done = int(ends[piece])
+            for low in range(begin, done, CHUNK):
+                yield low, min(low + CHUNK, done), piece
+
+
+@dataclass(frozen=True, slots=True)
+class _Curve:
+    """Rising cubics ``v·t + a·t²/2 + j·t³/6`` that reach ``whole`` after ``duration``; scalars or one for each crossing."""
+
+    whole: Any
+    duration: Any
+    v: Any
+    a: Any
+    j: Any
+
+    def part(self, chosen: Bools) -> _Curve:
+        """The curves of some crossings."""
+        if np.ndim(self.v) == 0:
+            return self
+        return _Curve(*(getattr(self, field.name)[chosen] for field in fields(self)))
+
+
+def _solve(distance: Floats, curve: _Curve) -> Floats:
+    """The local time at which each curve has risen by ``distance``."""
+    if np.ndim(curve.j) == 0 and curve.j and curve.duration > 0:
+        grid = np.linspace(0.0, curve.duration, GRID)
+        heights = grid * (curve.v + grid * (curve.a / 2 + grid * curve.j / 6))
+        return _newton(distance, curve, np.interp(distance, heights, grid))
     with np.errstate(divide="ignore", invalid="ignore"):
-        local = np.where(duration > 0, 2 * distance / (speed + sign * root), 0.0)
-    local = np.clip(np.nan_to_num(local), 0, duration)
-    time_ps = motion.start_ps[segment] + np.rint(local).astype(np.int64)
-    return Crossings(time_ps, number, up)
+        # The form 2d/(v + sqrt(v² + 2ad)) loses no digits, and is exact without jerk.
+        root = np.sqrt(np.maximum(curve.v * curve.v + 2 * curve.a * distance, 0.0))
+        time: Floats = np.where(curve.duration > 0, 2 * distance / (curve.v + root), 0.0)
+    time = np.clip(np.nan_to_num(time, posinf=np.inf), 0.0, curve.duration)
+    if np.ndim(curve.j):
+        curved = (curve.j != 0) & (curve.duration > 0)
+        if curved.any():
+            bent = curve.part(curved)
+            share = np.divide(distance[curved], bent.whole, out=np.zeros(len(bent.whole)), where=bent.whole > 0)
+            # Starting from rest the cubic term rules; otherwise a straight line is near enough.
+            guess = bent.duration * np.where(bent.v * bent.duration < 0.1 * bent.whole, np.cbrt(share), share)
+            time[curved] = _newton(distance[curved], bent, guess)
+    return time
 
 
-def state_at(position_states: float) -> str:
-    """The state AB at a position."""
-    return A_LEADS_B[floor(position_states) % 4]
+def _newton(distance: Floats, curve: _Curve, time: Floats) -> Floats:
+    """Newton's method inside a bracket that halves where a step would leave it; to a hundredth of a ps."""
+    low, high = np.zeros_like(distance), np.zeros_like(distance) + curve.duration
+    result, index = time.copy(), np.arange(len(time))
+    for _ in range(_MOST_STEPS):
+        off = time * (curve.v + time * (curve.a / 2 + time * (curve.j / 6))) - distance
+        slope = curve.v + time * (curve.a + time * (curve.j / 2))
+        above = off > 0
+        np.copyto(high, time, where=above)
+        np.copyto(low, time, where=~above)
+        with np.errstate(divide="ignore", invalid="ignore"):
+            following = time - off / slope
+        bad = ~((following >= low) & (following <= high))
+        if bad.any():
+            following[bad] = (low[bad] + high[bad]) / 2
+        going = np.abs(following - time) > _NEAR_PS
+        result[index] = following
+        if not going.any():
+            break
+        index, curve = index[going], curve.part(going)
+        time, distance, low, high = following[going], distance[going], low[going], high[going]
+    return result

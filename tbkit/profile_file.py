@@ -2,94 +2,133 @@
 
 from __future__ import annotations
 
+import csv
 import re
 from collections.abc import Callable
 from fractions import Fraction
 from pathlib import Path
-from typing import TypeVar
 
+from tbkit import encoder_file
 from tbkit.contract import A_LEADS_B
+from tbkit.disturb_file import disturbances
 from tbkit.profile import (
     Action,
-    Bounce,
-    Disturbance,
+    Clicks,
     Dither,
     Drive,
     Encoder,
-    Glitch,
+    Home,
     Illegal,
-    IndexMark,
-    Missing,
     Move,
     Profile,
     Repeat,
     Rest,
+    Return,
     Reverse,
+    Sine,
+    Table,
     Walk,
 )
-from tbkit.units import Quantity
-from tbkit.yamltree import Entry, Section, load, nearest, quoted
+from tbkit.reading import MOST_TIMES, ONE, optional, pair, quantity, range_, tagged, times
+from tbkit.units import Quantity, parse
+from tbkit.yamltree import Entry, Section, load, quoted
 
-T = TypeVar("T")
-
-MOST_TIMES = 1_000_000
-MOST_BOUNCES = 1000
 NEEDS = ("count", "direction", "step", "error", "sticky-error", "clear-error", "index", "reset", "no-reset", "filter")
-_LINES = ("a", "b", "index")
-_ONE = Quantity(Fraction(1), "states", "clocks", 1)
-
-
-def _quantity(section: Section, key: str, kind: str, example: str, sign: str = "positive") -> Quantity:
-    entry = section.require(key, example)
-    return entry.quantity(kind, sign) if entry else _ONE
-
-
-def _times(section: Section, default: int | None = None) -> int:
-    entry = section.get("times") if default is not None else section.require("times", "10")
-    return entry.integer(1, MOST_TIMES) if entry else default or 1
-
-
-def _range(entry: Entry, lowest: int, highest: int) -> tuple[int, int]:
-    """``3..9`` or a single number."""
-
-    def read(text: str) -> tuple[int, int]:
-        match = re.fullmatch(r"(\d{1,9})(?:\.\.(\d{1,9}))?", text)
-        least, most = (int(match.group(1)), int(match.group(2) or match.group(1))) if match else (lowest - 1, 0)
-        if least > most >= lowest:
-            msg = f"the range {text} runs backwards; write {most}..{least}"
-            raise ValueError(msg)
-        if not lowest <= least <= most <= highest:
-            msg = f"found {quoted(text)}, expected a whole number from {lowest} to {highest}, or a range such as 3..9"
-            raise ValueError(msg)
-        return least, most
-
-    return entry.convert(read, (lowest, lowest))
-
-
-def _pair(entry: Entry, kind: str) -> tuple[Quantity, Quantity]:
-    """``2 us`` or ``[0.2 us, 2 us]``."""
-    if not entry.is_list:
-        one = entry.quantity(kind)
-        return one, one
-    items = entry.items()
-    if len(items) != 2:
-        if items:
-            entry.problem(f"found a list of {len(items)}, expected one {kind} or [least, most]")
-        return _ONE, _ONE
-    least, most = (item.quantity(kind) for item in items)
-    return least, most
 
 
 def _rest(entry: Entry) -> Action:
     return Rest(entry.quantity("time", "not negative"))
 
 
+def _curve(section: Section) -> tuple[Quantity, Quantity | None, Quantity | None]:
+    """Speed, acceleration and jerk."""
+    speed, jerk = quantity(section, "speed", "speed", "3000 rpm"), section.get("jerk")
+    if jerk and not section.get("accel"):
+        jerk.problem("`jerk` needs `accel`; add for example `accel: 4000 rev/s2`")
+    return speed, optional(section, "accel", "acceleration"), optional(section, "jerk", "jerk")
+
+
 def _move(entry: Entry) -> Action:
-    section = entry.section(("by", "speed", "accel"))
-    by = _quantity(section, "by", "distance", "2 rev", "not zero")
-    speed = _quantity(section, "speed", "speed", "3000 rpm")
-    accel = section.get("accel")
-    return Move(by, speed, accel.quantity("acceleration") if accel else None)
+    section = entry.section(("by", "speed", "accel", "decel", "jerk", "start_speed", "end_speed"))
+    by = quantity(section, "by", "distance", "2 rev", "not zero")
+    if (decel := section.get("decel")) and section.get("jerk"):
+        decel.problem("`decel` belongs to a move without `jerk`; with it both ramps have the same bounds")
+    for key in ("decel", "start_speed", "end_speed"):
+        if (given := section.get(key)) and not section.get("accel"):
+            given.problem(f"`{key}` needs `accel`; without it the whole move has one speed")
+    ends = optional(section, "start_speed", "speed"), optional(section, "end_speed", "speed")
+    return Move(by, *_curve(section), *ends, optional(section, "decel", "acceleration"))
+
+
+def _return(entry: Entry) -> Action:
+    return Return(*_curve(entry.section(("speed", "accel", "jerk"))))
+
+
+def _sine(entry: Entry) -> Action:
+    section = entry.section(("amplitude", "rate", "cycles"))
+    rate, cycles = section.require("rate", "[1 Hz, 50 Hz]"), section.require("cycles", "10")
+    first, last = pair(rate, "rate", rising=False) if rate else (ONE, ONE)
+    amplitude = quantity(section, "amplitude", "distance", "10 deg")
+    return Sine(amplitude, first, last, cycles.integer(1, MOST_TIMES) if cycles else 1)
+
+
+def _table(entry: Entry) -> Action:
+    """A CSV file of two columns whose first line names them with their units, such as ``time_ms,angle_deg``."""
+    name = entry.section(("file",)).require("file", "run.csv")
+    if name is None:
+        return Rest(ONE)
+
+    def read(text: str) -> tuple[tuple[Quantity, Quantity], ...]:
+        path = Path(entry.file).parent / text
+        try:
+            rows = list(csv.reader(path.read_text("utf-8").splitlines()))
+        except (OSError, UnicodeDecodeError, csv.Error) as error:
+            msg = f"{quoted(text)} cannot be read as a table: {error}"
+            raise ValueError(msg) from error
+        return _points(rows, text)
+
+    none: tuple[tuple[Quantity, Quantity], ...] = ()
+    points = name.convert(read, none)
+    return Table(points) if points else Rest(ONE)
+
+
+def _points(rows: list[list[str]], name: str) -> tuple[tuple[Quantity, Quantity], ...]:
+    units = [column.strip().rpartition("_")[2] for column in rows[0]] if rows else []
+    if len(units) != 2 or len(rows) < 3:
+        msg = f"{name}: expected a line such as time_ms,angle_deg and two lines of numbers or more"
+        raise ValueError(msg)
+    points: list[tuple[Quantity, Quantity]] = []
+    for number, row in enumerate(rows[1:], start=2):
+        try:
+            time, place = row
+            point = parse(f"{time.strip()} {units[0]}", "time"), parse(f"{place.strip()} {units[1]}", "distance")
+        except ValueError as error:
+            msg = f"{name}:{number}: {error}" if len(row) == 2 else f"{name}:{number}: found {len(row)} columns, expected 2"
+            raise ValueError(msg) from error
+        if points and point[0].value <= points[-1][0].value:
+            msg = f"{name}:{number}: the time {time.strip()} is not after the one before"
+            raise ValueError(msg)
+        points.append(point)
+    return tuple(points)
+
+
+def _clicks(entry: Entry) -> Action:
+    section = entry.section(("by", "time", "every", "times"))
+    by = quantity(section, "by", "distance", "4 states", "not zero")
+    time, every = quantity(section, "time", "time", "20 ms"), quantity(section, "every", "time", "150 ms")
+    return Clicks(by, time, every, times(section))
+
+
+def _home(entry: Entry) -> Action:
+    section = entry.section(("going", "fast", "slow", "accel", "back_off"))
+    going = section.require("going", "backward")
+    return Home(
+        going is not None and going.choice(("forward", "backward")) == "forward",
+        quantity(section, "fast", "speed", "300 rpm"),
+        quantity(section, "slow", "speed", "10 rpm"),
+        quantity(section, "accel", "acceleration", "100 rev/s2"),
+        quantity(section, "back_off", "distance", "8 states"),
+    )
 
 
 def _reverse(entry: Entry) -> Action:
@@ -99,8 +138,8 @@ def _reverse(entry: Entry) -> Action:
         state.choice(A_LEADS_B) if state else "00",
         going is None or going.choice(("forward", "backward")) == "forward",
         run.quantity("distance") if run else Quantity(Fraction(3), "states", "", 0),
-        _quantity(section, "speed", "speed", "1 states/dwell"),
-        _times(section, 1),
+        quantity(section, "speed", "speed", "1 states/dwell"),
+        times(section, 1),
     )
 
 
@@ -109,22 +148,29 @@ def _dither(entry: Entry) -> Action:
     over = section.get("over")
     return Dither(
         over.quantity("distance", "not zero") if over else Quantity(Fraction(1), "states", "", 0),
-        _quantity(section, "every", "time", "2 us"),
-        _times(section),
+        quantity(section, "every", "time", "2 us"),
+        times(section),
     )
 
 
 def _illegal(entry: Entry) -> Action:
     section = entry.section(("every", "times"))
-    return Illegal(_quantity(section, "every", "time", "2 settle"), _times(section, 1))
+    return Illegal(quantity(section, "every", "time", "2 settle"), times(section, 1))
 
 
 def _walk(entry: Entry) -> Action:
-    section = entry.section(("travel", "speed", "run"))
+    section = entry.section(("travel", "speed", "run", "accel"))
     speed, run = section.require("speed", "[0.1 states/dwell, 1 states/dwell]"), section.get("run")
-    slow, fast = _pair(speed, "speed") if speed else (_ONE, _ONE)
-    shortest, longest = _range(run, 1, MOST_TIMES) if run else (1, 8)
-    return Walk(_quantity(section, "travel", "distance", "2000 states"), slow, fast, shortest, longest)
+    slow, fast = pair(speed, "speed") if speed else (ONE, ONE)
+    shortest, longest = range_(run, 1, MOST_TIMES) if run else (1, 8)
+    return Walk(
+        quantity(section, "travel", "distance", "2000 states"),
+        slow,
+        fast,
+        shortest,
+        longest,
+        optional(section, "accel", "acceleration"),
+    )
 
 
 def _drive(signal: str) -> Callable[[Entry], Action]:
@@ -133,7 +179,7 @@ def _drive(signal: str) -> Callable[[Entry], Action]:
         moving = section.get("moving")
         return Drive(
             signal,
-            _quantity(section, "for", "time", "4 clocks"),
+            quantity(section, "for", "time", "4 clocks"),
             moving.quantity("speed", "not zero") if moving else None,
         )
 
@@ -143,12 +189,17 @@ def _drive(signal: str) -> Callable[[Entry], Action]:
 def _repeat(entry: Entry) -> Action:
     section = entry.section(("times", "do"))
     do = section.require("do", "[{rest: 10 us}]")
-    return Repeat(_times(section), _actions(do) if do else ())
+    return Repeat(times(section), _actions(do) if do else ())
 
 
 _ACTIONS: dict[str, Callable[[Entry], Action]] = {
     "rest": _rest,
     "move": _move,
+    "return": _return,
+    "sine": _sine,
+    "table": _table,
+    "clicks": _clicks,
+    "home": _home,
     "reverse": _reverse,
     "dither": _dither,
     "illegal": _illegal,
@@ -159,65 +210,8 @@ _ACTIONS: dict[str, Callable[[Entry], Action]] = {
 }
 
 
-def _glitch(entry: Entry) -> Disturbance:
-    section = entry.section(("on", "width", "times"))
-    on = section.require("on", "a")
-    return Glitch(on.choice(_LINES) if on else "a", _quantity(section, "width", "time", "1 reject"), _times(section))
-
-
-def _bounce(entry: Entry) -> Disturbance:
-    section = entry.section(("on", "for", "pulses"))
-    on, time, pulses = section.require("on", "a"), section.require("for", "[0.2 us, 2 us]"), section.require("pulses", "3..9")
-    shortest, longest = _pair(time, "time") if time else (_ONE, _ONE)
-    fewest, most = _range(pulses, 0, MOST_BOUNCES) if pulses else (0, 0)
-    return Bounce(on.choice(_LINES) if on else "a", shortest, longest, fewest, most)
-
-
-def _missing(entry: Entry) -> Disturbance:
-    section = entry.section(("on", "pulses"))
-    on, pulses = section.require("on", "a"), section.require("pulses", "[3, 8]")
-    numbers = tuple(item.integer(1, MOST_TIMES) for item in pulses.items()) if pulses else ()
-    return Missing(on.choice(_LINES) if on else "a", numbers)
-
-
-_DISTURBANCES: dict[str, Callable[[Entry], Disturbance]] = {"glitch": _glitch, "bounce": _bounce, "missing": _missing}
-
-
-def _tagged(entry: Entry, readers: dict[str, Callable[[Entry], T]], article: str, what: str) -> list[T]:
-    """A list of maps with one key each: the name of an action and its settings."""
-    found: list[T] = []
-    for item in entry.items(f"a list of {what}s, each begun with `-`"):
-        pairs = item.pairs(f"{article} {what} such as `{next(iter(readers))}: ...`")
-        if not pairs and item.sound:
-            item.problem(f"found an empty map, expected {article} {what} such as `{next(iter(readers))}: ...`")
-        if len(pairs) > 1:
-            item.problem(f"found {len(pairs)} keys, expected one {what} an item; start each with its own `-`")
-        for name, value in pairs[:1]:
-            if name in readers:
-                found.append(readers[name](value))
-            else:
-                value.problem(f"unknown {what}; known: {', '.join(readers)}{nearest(name, readers)}")
-    return found
-
-
 def _actions(entry: Entry) -> tuple[Action, ...]:
-    return tuple(_tagged(entry, _ACTIONS, "an", "action"))
-
-
-def _encoder(entry: Entry) -> Encoder:
-    section = entry.section(("lines", "start", "index"))
-    lines, start, index = section.get("lines"), section.get("start"), section.get("index")
-    mark = None
-    if index is not None:
-        inner = index.section(("width", "at"))
-        width, at = inner.require("width", "90 deg"), inner.require("at", "0 deg")
-        mark = IndexMark(width.quantity("angle") if width else _ONE, at.quantity("angle", "not negative") if at else _ONE)
-        if lines is None:
-            index.problem("an index needs the line count; add `lines: 1024` to the encoder")
-    line_count = lines.integer(1, 1 << 24) if lines else None
-    if index and mark and line_count and entry.sound and mark.width.value >= 360 * line_count:
-        index.problem(f"the width {mark.width} is no less than the whole revolution of {360 * line_count} deg")
-    return Encoder(line_count, start.choice(A_LEADS_B) if start else "00", mark)
+    return tuple(tagged(entry, _ACTIONS, "an", "action"))
 
 
 def read_profile(path: Path) -> Profile:
@@ -245,8 +239,8 @@ def read_profile(path: Path) -> Profile:
         tuple(item.choice(NEEDS) for item in needs.items()) if needs else (),
         seed.integer(0, (1 << 63) - 1) if seed else None,
         _actions(motion) if motion else (),
-        _encoder(encoder) if encoder else Encoder(),
-        tuple(_tagged(disturb, _DISTURBANCES, "a", "disturbance")) if disturb else (),
+        encoder_file.encoder(encoder) if encoder else Encoder(),
+        disturbances(disturb) if disturb else (),
         power_up is not None and power_up.flag(),
     )
     document.finish()

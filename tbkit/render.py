@@ -13,7 +13,8 @@ import jinja2
 
 from tbkit import __version__
 from tbkit.contract import BENCH, Contract, Port
-from tbkit.stimulus import SIGNALS
+from tbkit.encoder import LINES
+from tbkit.stimulus import SIGNALS, UNKNOWN
 from tbkit.trace import fields, record_words
 
 
@@ -83,7 +84,8 @@ def _context(contract: Contract) -> dict[str, object]:
     return {
         "version": __version__,
         "bench": BENCH,
-        "signals": [{"name": name, "bit": bit} for bit, name in enumerate(SIGNALS)],
+        "signals": [{"name": name, "bit": bit, "may_be_unknown": name in LINES} for bit, name in enumerate(SIGNALS)],
+        "unknown_bit": UNKNOWN.bit_length() - 1,
         "outputs": [{"name": field.name, "range": f"[{field.width - 1}:0] " if field.width > 1 else ""} for field in layout],
         "record": [sv_literal(0, spare), *record] if spare else record,
         "record_bits": record_bits,

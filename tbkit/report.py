@@ -59,12 +59,16 @@ def print_results(console: Console, contract: Contract, results: Results, own_pr
             reasons.setdefault(profile.reason, []).append(profile.name)
     for reason, names in reasons.items():
         console.print(f"  left out, {reason}: {', '.join(names)}", style="dim")
+    for profile in results.profiles:
+        for text in profile.undetectable:
+            console.print(f"  no decoder can detect, in {profile.name}: {text}", style="dim", markup=False)
     failed = [profile for profile in results.profiles if profile.verdict == "fail"]
-    kinds = Counter(kind for profile in failed if profile.score for kind in profile.score.totals)
-    for kind in list(kinds)[:SHOWN]:
+    # What was seen most comes first.
+    kinds = [kind for kind, _ in sum((Counter(one.score.totals) for one in failed if one.score), Counter()).most_common()]
+    for kind in kinds[:SHOWN]:
         _print_kind(console, contract, results, kind, own_profiles)
     if len(kinds) > SHOWN:
-        console.print(f"\n  also found: {', '.join(list(kinds)[SHOWN:])}; --json FILE writes every finding")
+        console.print(f"\n  also found: {', '.join(kinds[SHOWN:])}; --json FILE writes every finding")
     _print_verdict(console, results, failed)
 
 
@@ -162,6 +166,7 @@ def as_json(contract: Contract, seed: int, results: Sequence[Results]) -> str:
                     "comparisons": profile.comparisons,
                     "worst_latency": profile.score.worst_latency if profile.score else None,
                     "open_clocks": profile.score.open_clocks if profile.score else None,
+                    "undetectable": list(profile.undetectable),
                     "totals": profile.score.totals if profile.score else {},
                     "findings": [asdict(finding) for finding in profile.findings],
                 }

@@ -8,12 +8,14 @@ where it is, until a reset at rest or the index gives a new origin.
 from __future__ import annotations
 
 from dataclasses import dataclass
-from math import floor
+from math import ceil, floor
 
 import numpy as np
+import numpy.typing as npt
 
 from tbkit.contract import A_LEADS_B, Contract, Count
 from tbkit.motion import Int64s
+from tbkit.ordered import merged
 from tbkit.stimulus import Stimulus
 
 
@@ -36,19 +38,24 @@ def _counted(count: Count, place: Int64s) -> Int64s:
 
 def _gated(contract: Contract, stimulus: Stimulus, place: Int64s) -> Int64s:
     """1 where the index zeroes the count at that position, 0 where it does not, -1 where it depends on the instant."""
-    window, index = stimulus.ideal.window, contract.index
-    if window is None or index is None:
-        return np.zeros(len(place), dtype=np.int64)
-    whole = window.begin.denominator == window.end.denominator == 1
-    into = (place - floor(window.begin)) % window.every
-    width = (window.end.__ceil__()) - floor(window.begin)
-    inside = into < width
+    windows, index = stimulus.ideal.windows, contract.index
+    inside = np.zeros(len(place), dtype=bool)
+    if not windows or index is None:
+        return inside.astype(np.int64)
+    # Edges that are not where A and B have theirs, or are not seen together, may come up to a state earlier or later.
+    whole = stimulus.ideal.exact_index and not stimulus.aperture_ps
+    spare = 0 if whole else 1
+    for window in windows:
+        into = (place - floor(window.begin) + spare) % window.every
+        inside |= into < ceil(window.end) - floor(window.begin) + 2 * spare
+    if not whole:
+        return -inside.astype(np.int64)
     states = np.array([[int(level) for level in state] for state in A_LEADS_B])[place % 4]
     if index.a is not None:
         inside &= states[:, 0] == index.a
     if index.b is not None:
         inside &= states[:, 1] == index.b
-    return inside.astype(np.int64) * (1 if whole else -1)
+    return inside.astype(np.int64)
 
 
 def rests(contract: Contract, stimulus: Stimulus, doubtful_ps: Int64s) -> Rests:
@@ -62,23 +69,29 @@ def rests(contract: Contract, stimulus: Stimulus, doubtful_ps: Int64s) -> Rests:
     first = floor(stimulus.ideal.first_states)
     place = np.concatenate([[first], np.where(ledger.up, ledger.number, ledger.number - 1)])
     since_ps = np.concatenate([[0], ledger.time_ps])
+    # Where the shaft jumps it is nowhere in between.
+    lasts = np.append(since_ps[1:] != since_ps[:-1], True)
+    place, since_ps = place[lasts], since_ps[lasts]
     counted, gated = _counted(count, place), _gated(contract, stimulus, place)
     hurried_ps = _hurried(contract, stimulus)
-    for begin_ps, end_ps in _short(stimulus.ideal.lines["index"].toggles_ps, contract.filter.passes * period_ps).tolist():
+    seen_ps = contract.filter.passes * period_ps + stimulus.aperture_ps
+    for begin_ps, end_ps in _short(stimulus.ideal.lines["index"].toggles_ps, seen_ps).tolist():
         # An index pulse, or a gap between two, that need not be seen.
         gated = np.where((gated == 1) & (since_ps >= begin_ps) & (since_ps <= end_ps), -1, gated)
 
     quiet_ps = contract.settle_clocks * period_ps
     acting = [line.toggles_ps for line in (*stimulus.lines.values(), *stimulus.drives.values())]
     # The shaft as well: chatter can delay the first edge that is seen of a motion.
-    moves = np.unique(np.concatenate([*acting, ledger.time_ps]))
+    moves = merged(*acting, ledger.time_ps)
     ends = np.append(moves[1:], stimulus.periods * period_ps)
     still = ends - moves > quiet_ps + period_ps
     check_ps = ends[still] // period_ps * period_ps - 1
 
     # A disturbance may go on disturbing, so what is lost to one is lost for good.
     good = check_ps < (stimulus.lost_ps if stimulus.lost_ps is not None else np.iinfo(np.int64).max)
-    origins = _origins(contract, stimulus, since_ps, counted, gated, quiet_ps)
+    # Within a pulse that lasts for long the lines are still, but show another state: no rest of the shaft's.
+    good &= _truthful(stimulus, place[np.searchsorted(since_ps, check_ps, side="right") - 1], check_ps)
+    origins = _origins(contract, stimulus, place, since_ps, counted, gated, quiet_ps)
     origins += [_Origin(int(time), None, 0) for time in [*doubtful_ps.tolist(), *hurried_ps.tolist()]]
     origins.sort(key=lambda origin: origin.time_ps)
     times = np.array([origin.time_ps for origin in origins], dtype=np.int64)
@@ -102,6 +115,16 @@ def rests(contract: Contract, stimulus: Stimulus, doubtful_ps: Int64s) -> Rests:
     return Rests(table[:, 0], table[:, 1])
 
 
+def _truthful(stimulus: Stimulus, place: Int64s, at_ps: Int64s) -> npt.NDArray[np.bool_]:
+    """Whether A and B show the state of the shaft, which is at ``place`` (whole states) at those times."""
+    states = np.array([[int(level) for level in state] for state in A_LEADS_B])[place % 4]
+    right = np.ones(len(place), dtype=bool)
+    for column, line in enumerate((stimulus.lines["a"], stimulus.lines["b"])):
+        level = line.first ^ (np.searchsorted(line.toggles_ps, at_ps, side="right") & 1)
+        right &= level == states[:, column]
+    return right
+
+
 def _short(toggles_ps: Int64s, least_ps: int) -> Int64s:
     """int64[n, 2]: (begin, end) of every level that lasts less than ``least_ps``."""
     short = np.flatnonzero(np.diff(toggles_ps) < least_ps)
@@ -112,10 +135,14 @@ def _hurried(contract: Contract, stimulus: Stimulus) -> Int64s:
     """When the shaft moves faster than the decoder promises to follow."""
     period_ps, ideal = stimulus.period_ps, stimulus.ideal
     # Edge times are rounded to whole ps, so a state may look shorter than it is by that much.
-    parts = [_short(ideal.ledger.time_ps, contract.shortest_state * period_ps - 2)]
-    parts += [_short(ideal.lines[name].toggles_ps, contract.filter.passes * period_ps - 2) for name in ("a", "b")]
+    both = ideal.lines["a"].toggles_ps, ideal.lines["b"].toggles_ps
+    # Both lines at once are no state; through an aperture they are seen one after the other, in either order.
+    states_ps = np.sort(np.concatenate(both)) if stimulus.aperture_ps else merged(*both)
+    spare_ps = stimulus.aperture_ps - 2
+    parts = [_short(states_ps, contract.shortest_state * period_ps + spare_ps)]
+    parts += [_short(ideal.lines[name].toggles_ps, contract.filter.passes * period_ps + spare_ps) for name in ("a", "b")]
     if contract.index is not None:
-        parts.append(_short(ideal.lines["index"].toggles_ps, contract.filter.passes * period_ps - 2))
+        parts.append(_short(ideal.lines["index"].toggles_ps, contract.filter.passes * period_ps + spare_ps))
     return np.concatenate([part[:, 0] for part in parts])
 
 
@@ -129,7 +156,7 @@ class _Origin:
 
 
 def _origins(
-    contract: Contract, stimulus: Stimulus, since_ps: Int64s, counted: Int64s, gated: Int64s, quiet_ps: int
+    contract: Contract, stimulus: Stimulus, place: Int64s, since_ps: Int64s, counted: Int64s, gated: Int64s, quiet_ps: int
 ) -> list[_Origin]:
     origins: list[_Origin] = []
     releases = _resets(stimulus) if contract.reset else [(0, 0)] if stimulus.power_up else []
@@ -140,8 +167,9 @@ def _origins(
         near |= contract.reset is not None and time - begin < contract.reset.clocks * stimulus.period_ps
         at = int(np.searchsorted(since_ps, time, side="right")) - 1
         # The state is read from the shaft; if the lines lie, the run is lost anyway.
-        state = A_LEADS_B[int(_place(stimulus, at)) % 4]
-        known = not near and state in contract.start.rest_states
+        state = A_LEADS_B[int(place[at]) % 4]
+        truthful = bool(_truthful(stimulus, place[at : at + 1], np.array([time]))[0])
+        known = not near and truthful and state in contract.start.rest_states
         value = contract.start.count if known else None
         if gated[at] and contract.start.count != 0:
             # The index is on when the reset ends: sensed as a level it zeroes the count, as an edge it may.
@@ -151,7 +179,9 @@ def _origins(
     if contract.index is not None and contract.index.edge:
         gated = np.where((gated == 1) & (np.concatenate([[0], gated[:-1]]) == 1), 0, gated)
     for at in np.flatnonzero(gated).tolist():
-        origins.append(_Origin(int(since_ps[at]), 0 if gated[at] == 1 else None, int(counted[at])))
+        # Soon after a reset the decoder need not be awake.
+        asleep = any(time <= since_ps[at] < time + quiet_ps for _, time in releases)
+        origins.append(_Origin(int(since_ps[at]), 0 if gated[at] == 1 and not asleep else None, int(counted[at])))
     return origins
 
 
@@ -160,10 +190,3 @@ def _resets(stimulus: Stimulus) -> list[tuple[int, int]]:
     line = stimulus.drives["reset"]
     toggles = [0, *line.toggles_ps.tolist()] if line.first else line.toggles_ps.tolist()
     return list(zip(toggles[::2], toggles[1::2], strict=False))
-
-
-def _place(stimulus: Stimulus, at: int) -> int:
-    if at == 0:
-        return floor(stimulus.ideal.first_states)
-    ledger = stimulus.ideal.ledger
-    return int(ledger.number[at - 1]) - (0 if ledger.up[at - 1] else 1)

@@ -12,15 +12,19 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from tbkit.contract import Contract
-from tbkit.disturb import disturb
-from tbkit.encoder import LINES, IdealEdges, Line, encode
+from tbkit.course import build_motion
+from tbkit.disturb import Disturbed, Scene, disturb
+from tbkit.encoder import LINES, Edges, Line, encode, index_windows
 from tbkit.errors import UnfitError
-from tbkit.motion import Int64s, build_motion
+from tbkit.motion import CHUNK, Int64s, Motion
+from tbkit.ordered import merged, run_lengths, run_starts
 from tbkit.profile import Profile
 from tbkit.units import Scale
 
 #: Bits of a word's levels, in this order; the bench template uses the same.
 SIGNALS = (*LINES, "reset", "clear")
+#: The level bit that makes A, B and index X.
+UNKNOWN = 1 << 15
 CLEARANCE_PS = 2
 #: At most this many clock periods are simulated for one profile.
 MOST_PERIODS = 2_000_000_000
@@ -48,11 +52,14 @@ class Stimulus:
         period_ps: clock period P.
         lines: A, B and index.
         drives: the decoder's inputs ``reset`` and ``clear``.
-        ideal: the true edges (``ledger`` times as played).
+        ideal: the encoder's own edges, before disturbances.
         begin_ps: when the motion begins.
         lost_ps: from when the lines no longer tell where the shaft is, or None.
         periods: how many clock periods are played.
         power_up: the decoder must come fresh from power-up.
+        undetectable: what no decoder of A and B could notice, in words.
+        unknown_ps: the lines are X up to here (0: they never are).
+        aperture_ps: by how much less than it is a level may seem to last, because of apertures.
     """
 
     name: str
@@ -60,12 +67,15 @@ class Stimulus:
     period_ps: int
     lines: dict[str, Line]
     drives: dict[str, Line]
-    ideal: IdealEdges
+    ideal: Edges
     begin_ps: int
     lost_ps: int | None
     periods: int
     unfold: Unfold
     power_up: bool
+    undetectable: tuple[str, ...] = ()
+    unknown_ps: int = 0
+    aperture_ps: int = 0
 
     @property
     def edges(self) -> int:
@@ -79,19 +89,25 @@ class Stimulus:
         """
         lines = {**self.lines, **self.drives}
         times = [lines[name].toggles_ps for name in SIGNALS]
-        bits = np.repeat(1 << np.arange(len(SIGNALS), dtype=np.int64), [len(t) for t in times])
+        bits = np.repeat(1 << np.arange(len(SIGNALS), dtype=np.uint16), [len(t) for t in times])
         time_ps = np.concatenate(times)
         order = np.argsort(time_ps, kind="stable")
         time_ps, bits = time_ps[order], bits[order]
+        del order
         first = sum(lines[name].first << bit for bit, name in enumerate(SIGNALS))
-        levels = first ^ np.bitwise_xor.accumulate(bits) if len(bits) else bits
+        levels = np.bitwise_xor.accumulate(bits) ^ np.uint16(first) if len(bits) else bits
         last = np.append(time_ps[1:] != time_ps[:-1], True)[: len(time_ps)]
         time_ps, levels = time_ps[last], levels[last]
-        end_ps = self.periods * self.period_ps
-        time_ps = np.concatenate([[0], time_ps, [end_ps]])
-        levels = np.concatenate([[first], levels, levels[-1:] if len(levels) else [first]])
-        waits = np.diff(time_ps, prepend=0)
-        return waits.astype(np.uint64) << np.uint64(16) | levels.astype(np.uint64)
+        if self.unknown_ps:
+            # Nothing moves before reset is over, so this is the first word but one.
+            time_ps, levels = np.append(self.unknown_ps, time_ps), np.append(np.uint16(first), levels)
+            first |= UNKNOWN
+        levels = np.concatenate([np.array([first], dtype=np.uint16), levels])
+        waits = np.diff(time_ps, prepend=0, append=self.periods * self.period_ps)
+        words = np.append(0, waits).astype(np.uint64)
+        words <<= np.uint64(16)
+        words |= np.append(levels, levels[-1])
+        return words
 
 
 def generator(seed: int, name: str, stream: str) -> np.random.Generator:
@@ -103,27 +119,77 @@ def _clear_of_clock(line: Line, period_ps: int) -> Line:
     """Keep :data:`CLEARANCE_PS` from active edges, within the same clock period; toggles that meet cancel out."""
     phase = line.toggles_ps % period_ps
     moved = line.toggles_ps - phase + np.clip(phase, CLEARANCE_PS, period_ps - CLEARANCE_PS)
-    times, how_many = np.unique(moved, return_counts=True)
-    return Line(line.first, times[how_many % 2 == 1])
+    return Line(line.first, moved[run_starts(moved)][run_lengths(moved) % 2 == 1])
 
 
 def _fold(times_ps: list[Int64s], quiet_ps: int, period_ps: int) -> Unfold:
-    """Shorten every gap longer than ``quiet_ps`` by whole clock periods; the map from played time to the profile's."""
-    events = np.unique(np.concatenate([np.zeros(1, dtype=np.int64), *times_ps]))
+    """Shorten every gap longer than ``quiet_ps`` by whole clock periods; the map from played time to the profile's.
+
+    Raises:
+        UnfitError: a gap is left that is too long to be played.
+    """
+    events = merged(np.zeros(1, dtype=np.int64), *times_ps)
     gaps = np.diff(events)
-    cuts = np.maximum(gaps - quiet_ps, 0) // period_ps * period_ps
-    total = np.concatenate([[0], np.cumsum(cuts)])
-    return Unfold(events - total, total)
+    long = np.flatnonzero(gaps > quiet_ps)
+    cuts = (gaps[long] - quiet_ps) // period_ps * period_ps
+    gaps[long] -= cuts
+    if gaps.max(initial=0) > LONGEST_WAIT_PS:
+        msg = f"nothing moves for more than {LONGEST_WAIT_PS} ps, the longest wait that can be played"
+        raise UnfitError(msg)
+    total = np.append(0, np.cumsum(cuts))
+    return Unfold(np.append(0, events[long + 1]) - total, total)
 
 
 def _folded(times_ps: Int64s, unfold: Unfold) -> Int64s:
     """Times of the profile as played. A time in a gap that was cut lands at the latest just before the gap's end."""
-    real = unfold.played_ps + unfold.cut_ps
-    at = np.searchsorted(real, times_ps, side="right") - 1
-    played = times_ps - unfold.cut_ps[at]
-    ceiling = np.append(unfold.played_ps[1:] - 1, np.iinfo(np.int64).max)[at]
-    folded: Int64s = np.minimum(played, ceiling)
+    real_ps = unfold.played_ps + unfold.cut_ps
+    last = len(real_ps) - 1
+    folded = np.empty_like(times_ps)
+    # In parts, so that what is in between takes little memory.
+    for low in range(0, len(times_ps), CHUNK):
+        some = times_ps[low : low + CHUNK]
+        at = np.searchsorted(real_ps, some, side="right") - 1
+        before_next = np.where(at < last, unfold.played_ps[np.minimum(at + 1, last)] - 1, np.iinfo(np.int64).max)
+        folded[low : low + CHUNK] = np.minimum(some - unfold.cut_ps[at], before_next)
     return folded
+
+
+@dataclass(frozen=True, slots=True)
+class Scenario:
+    """One profile laid out in its own time, before it is fitted to a clock.
+
+    Attributes:
+        motion: the shaft.
+        edges: what the encoder makes of it.
+        disturbed: what arrives at the pins.
+        begin_ps: when the motion begins.
+    """
+
+    motion: Motion
+    edges: Edges
+    disturbed: Disturbed
+    begin_ps: int
+
+
+def lay_out(profile: Profile, scale: Scale, seed: int, begin_ps: int, most_states: int = MOST_PERIODS) -> Scenario:
+    """Motion, encoder and disturbances of a profile; the motion begins at ``begin_ps``.
+
+    Raises:
+        UnfitError: something has no meaning for this decoder, or there are more than ``most_states``.
+    """
+
+    def generators(use: str) -> np.random.Generator:
+        return generator(seed, profile.name, use)
+
+    encoder = profile.encoder
+    motion = build_motion(profile.motion, scale, encoder.start, begin_ps, generators("motion"), index_windows(encoder))
+    # A state takes a clock at least, or nothing could be counted: said before the edges are made, which take memory.
+    states = int(np.abs(motion.to_states - motion.from_states).sum())
+    if states > most_states:
+        raise _too_long(states, most_states)
+    edges = encode(motion, encoder, scale, generators)
+    scene = Scene(scale, edges.ledger, (begin_ps, motion.end_ps), generators, edges.lost_ps)
+    return Scenario(motion, edges, disturb(edges.lines, profile.disturb, scene), begin_ps)
 
 
 def compile_stimulus(profile: Profile, contract: Contract, seed: int, most_periods: int = MOST_PERIODS) -> Stimulus:
@@ -136,64 +202,101 @@ def compile_stimulus(profile: Profile, contract: Contract, seed: int, most_perio
     """
     _check_needs(profile, contract)
     seed = profile.seed if profile.seed is not None else seed
-    scale = Scale.of(contract, profile.encoder.lines)
-    period_ps = contract.clock.period_ps
+    scale = Scale.of(contract, profile.encoder.lines, profile.encoder.pitch)
+    period_ps, settle = contract.clock.period_ps, contract.settle_clocks
     reset_clocks = contract.reset.clocks if contract.reset else 0
-    settle = contract.settle_clocks
     # Not a whole number of half periods, so that edges of simple motions fall inside a clock period.
     begin_ps = (reset_clocks + 1 + settle) * period_ps + 3 * period_ps // 8
-    motion = build_motion(profile.motion, scale, profile.encoder.start, begin_ps, generator(seed, profile.name, "motion"))
-    # A state takes a clock at least, or nothing could be counted: said before the edges are made, which take memory.
-    states = int(np.abs(motion.to_states - motion.from_states).sum())
-    if states > most_periods:
-        raise _too_long(states, most_periods)
-    ideal = encode(motion, profile.encoder)
-    generators = [
-        generator(seed, profile.name, f"{n} {type(disturbance).__name__}") for n, disturbance in enumerate(profile.disturb)
-    ]
-    lines, lost_ps = disturb(ideal.lines, profile.disturb, scale, (begin_ps, motion.end_ps), generators)
-    drives = {"reset": Line(0, np.zeros(0, dtype=np.int64)), "clear": Line(0, np.zeros(0, dtype=np.int64))}
-    if contract.reset:
-        drives["reset"] = Line(1, np.array([reset_clocks * period_ps + period_ps // 2], dtype=np.int64))
-    ports = {"reset": contract.reset, "clear": contract.clear_error}
-    for signal, from_ps, to_ps in motion.drives:
-        if ports[signal] is None:
-            msg = f"it drives the {signal} input, which this decoder does not have"
-            raise UnfitError(msg)
-        line = drives[signal]
-        drives[signal] = Line(line.first, np.append(line.toggles_ps, [from_ps, to_ps]))
-
+    scenario = lay_out(profile, scale, seed, begin_ps, most_periods)
+    disturbed, edges = scenario.disturbed, scenario.edges
+    if disturbed.unknown and contract.reset is None:
+        msg = "its lines are X until reset, and this decoder has no reset"
+        raise UnfitError(msg)
+    drives = _drives(contract, scenario, reset_clocks)
+    lines = disturbed.lines
+    for width_ps, name in disturbed.apertures_ps:
+        lines = {
+            line: _through_aperture(one, width_ps, period_ps, generator(seed, profile.name, f"{name} {line}"))
+            for line, one in lines.items()
+        }
     lines = {name: _clear_of_clock(line, period_ps) for name, line in lines.items()}
     drives = {name: _clear_of_clock(line, period_ps) for name, line in drives.items()}
     moving = [line.toggles_ps for line in (*lines.values(), *drives.values())]
     # Twice the time to come to rest: the first half ends all activity, the second shows that it has ended.
     quiet_ps = 2 * (settle + 8) * period_ps if not contract.timers else np.iinfo(np.int64).max
     unfold = _fold([*moving, np.array([begin_ps], dtype=np.int64)], quiet_ps, period_ps)
-    end_ps = int(_folded(np.array([motion.end_ps]), unfold)[0])
-    last_ps = max([end_ps, *(int(unfold.played_ps[-1]),)])
+
+    def played(time_ps: int) -> int:
+        return int(_folded(np.array([time_ps]), unfold)[0])
+
+    last_ps = played(max([scenario.motion.end_ps, *(int(times[-1]) for times in moving if len(times))]))
     periods = last_ps // period_ps + 2 * settle + 8
     if periods > most_periods:
         raise _too_long(periods, most_periods)
-    if np.diff(unfold.played_ps, append=periods * period_ps).max() > LONGEST_WAIT_PS:
-        msg = f"nothing moves for more than {LONGEST_WAIT_PS} ps, the longest wait that can be played"
-        raise UnfitError(msg)
 
-    def play(line: Line) -> Line:
-        return Line(line.first, _folded(line.toggles_ps, unfold))
+    def play(some: dict[str, Line]) -> dict[str, Line]:
+        return {name: Line(line.first, _folded(line.toggles_ps, unfold)) for name, line in some.items()}
 
+    ledger = replace(edges.ledger, time_ps=_folded(edges.ledger.time_ps, unfold))
     return Stimulus(
         profile.name,
         seed,
         period_ps,
-        {name: play(line) for name, line in lines.items()},
-        {name: play(line) for name, line in drives.items()},
-        replace(ideal, ledger=replace(ideal.ledger, time_ps=_folded(ideal.ledger.time_ps, unfold))),
-        int(_folded(np.array([begin_ps]), unfold)[0]),
-        None if lost_ps is None else int(_folded(np.array([lost_ps]), unfold)[0]),
+        play(lines),
+        play(drives),
+        replace(edges, lines=play(edges.lines), ledger=ledger),
+        played(begin_ps),
+        None if disturbed.lost_ps is None else played(disturbed.lost_ps),
         periods,
         unfold,
         profile.power_up,
+        (*disturbed.undetectable, *too_fast(ledger.time_ps, period_ps)),
+        (reset_clocks + 1) // 2 * period_ps + period_ps // 4 if disturbed.unknown else 0,
+        sum(width_ps + CLEARANCE_PS for width_ps, _ in disturbed.apertures_ps),
     )
+
+
+def _drives(contract: Contract, scenario: Scenario, reset_clocks: int) -> dict[str, Line]:
+    """The inputs reset and clear: power-on reset, and what motion and disturbances do with them.
+
+    Raises:
+        UnfitError: the decoder does not have that input.
+    """
+    period_ps = contract.clock.period_ps
+    ports = {"reset": contract.reset, "clear": contract.clear_error}
+    spans: dict[str, list[tuple[int, int]]] = {name: [] for name in ports}
+    for signal, from_ps, to_ps in sorted((*scenario.motion.drives, *scenario.disturbed.presses)):
+        if ports[signal] is None:
+            msg = f"it drives the {signal} input, which this decoder does not have"
+            raise UnfitError(msg)
+        known = spans[signal]
+        if known and from_ps <= known[-1][1]:
+            known[-1] = (known[-1][0], max(known[-1][1], to_ps))
+        else:
+            known.append((from_ps, to_ps))
+    drives = {name: Line(0, np.array(known, dtype=np.int64).reshape(-1)) for name, known in spans.items()}
+    if contract.reset:
+        release = np.array([reset_clocks * period_ps + period_ps // 2], dtype=np.int64)
+        drives["reset"] = Line(1, np.concatenate([release, drives["reset"].toggles_ps]))
+    return drives
+
+
+def _through_aperture(line: Line, width_ps: int, period_ps: int, rng: np.random.Generator) -> Line:
+    """Edges less than ``width_ps`` before a clock edge are seen by it or by the next one, by chance."""
+    inside = line.toggles_ps % period_ps >= period_ps - width_ps
+    late = inside & (rng.random(len(inside)) < 0.5)
+    moved = np.where(late, line.toggles_ps - line.toggles_ps % period_ps + period_ps + CLEARANCE_PS, line.toggles_ps)
+    return Line(line.first, np.sort(moved, kind="stable"))
+
+
+def too_fast(ledger_ps: Int64s, period_ps: int) -> tuple[str, ...]:
+    """What is too fast for any sampled decoder: three states or more within one clock look like another motion."""
+    period = ledger_ps // period_ps
+    third = period[2:] == period[:-2]
+    third[1:] &= period[1:-2] != period[:-3]
+    worst = int(third.sum())
+    text = f"{worst} clocks in which three states or more go by: every sampled decoder takes them for another motion"
+    return (text,) if worst else ()
 
 
 def _too_long(periods: int, most: int) -> UnfitError:

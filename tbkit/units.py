@@ -9,7 +9,7 @@ from __future__ import annotations
 import re
 from dataclasses import dataclass
 from fractions import Fraction
-from math import ceil
+from math import ceil, pi
 from typing import TYPE_CHECKING
 
 from tbkit.errors import UnfitError
@@ -21,7 +21,10 @@ PS_PER_S = 10**12
 
 _TIME_PS = {"s": PS_PER_S, "ms": 10**9, "us": 10**6, "ns": 10**3, "ps": 1}
 _DECODER_TIMES = ("clocks", "dwell", "shortest", "reject", "pass", "settle")
-_DISTANCES = ("states", "cycles", "rev", "deg", "overflow", "underflow")
+_METRES = {"m": Fraction(1), "mm": Fraction(1, 10**3), "um": Fraction(1, 10**6)}
+_DISTANCES = ("states", "cycles", "rev", "deg", "rad", *_METRES, "overflow", "underflow")
+#: A revolution in radians; a fraction that near makes no difference to whole ps.
+_TURN_RAD = Fraction(2 * pi).limit_denominator(10**15)
 _RATES_HZ = {"Hz": 1, "kHz": 10**3, "MHz": 10**6, "GHz": 10**9}
 _SINGULAR = {"clock": "clocks", "state": "states", "cycle": "cycles"}
 
@@ -29,8 +32,10 @@ _SINGULAR = {"clock": "clocks", "state": "states", "cycle": "cycles"}
 UNITS = {
     "time": ", ".join((*_TIME_PS, *_DECODER_TIMES)),
     "distance": ", ".join(_DISTANCES),
-    "speed": "rpm, rev/s, deg/s, Hz (cycles per second), or any distance/time such as states/dwell",
-    "acceleration": "rev/s2, deg/s2, or any distance/time2 such as states/ms2",
+    "speed": "rpm, rev/s, deg/s, rad/s, mm/s, m/s, Hz (cycles per second), or any distance/time such as states/dwell",
+    "acceleration": "rev/s2, deg/s2, rad/s2, m/s2, or any distance/time2 such as states/ms2",
+    "jerk": "rev/s3, deg/s3, rad/s3, m/s3, or any distance/time3 such as states/ms3",
+    "length": "m, mm, um",
     "angle": "deg (electrical degrees)",
     "rate": ", ".join(_RATES_HZ),
 }
@@ -40,6 +45,8 @@ _QUANTITY = re.compile(r"\s*([+-]?(?:\d+\.?\d*|\.\d+)(?:[eE]([+-]?\d+))?)\s*(.*?
 _MOST_DIGITS, _LARGEST_EXPONENT = 40, 30
 #: Longer times are refused: 11.6 days, so that sums of a few still fit into 64 bits.
 LONGEST_PS = 10**18
+#: The clock period where there is no decoder to tell it: how fast a broken wire chatters.
+NOMINAL_PERIOD_PS = 10_000
 
 
 @dataclass(frozen=True, slots=True)
@@ -53,7 +60,7 @@ class Quantity:
 
     def __str__(self) -> str:
         number = str(self.value) if self.value.denominator == 1 else f"{float(self.value):g}"
-        per = self.time if self.power < 2 else f"{self.time}2"
+        per = self.time if self.power < 2 else f"{self.time}{self.power}"
         return f"{number} {'/'.join(part for part in (self.distance, per) if part)}"
 
 
@@ -90,6 +97,8 @@ def _with_unit(value: Fraction, unit: str, kind: str) -> Quantity | None:
     if kind == "distance":
         name = _SINGULAR.get(unit, unit)
         return Quantity(value, name, "", 0) if name in _DISTANCES else None
+    if kind == "length":
+        return Quantity(value * _METRES[unit], "m", "", 0) if unit in _METRES else None
     if kind == "angle":
         return Quantity(value, "deg", "", 0) if unit == "deg" else None
     if kind == "rate":
@@ -99,9 +108,9 @@ def _with_unit(value: Fraction, unit: str, kind: str) -> Quantity | None:
     if kind == "speed" and unit in _RATES_HZ:
         return Quantity(value * _RATES_HZ[unit], "cycles", "s", 1)
     distance, slash, time = unit.partition("/")
-    power = 1 if kind == "speed" else 2
-    if power == 2:
-        if not time.endswith("2"):
+    power = {"speed": 1, "acceleration": 2, "jerk": 3}[kind]
+    if power > 1:
+        if not time.endswith(str(power)):
             return None
         time = time[:-1].removesuffix("^")
     distance, time = _SINGULAR.get(distance, distance), _SINGULAR.get(time, time)
@@ -112,13 +121,23 @@ def _with_unit(value: Fraction, unit: str, kind: str) -> Quantity | None:
     return Quantity(value, distance, time, power)
 
 
+def _disc_units(lines: int | None, pitch: Quantity | None) -> dict[str, Fraction]:
+    """Distance units that an encoder gives, in states."""
+    states = {"states": Fraction(1), "cycles": Fraction(4)}
+    if lines is not None:
+        states |= {"rev": Fraction(4 * lines), "deg": Fraction(4 * lines, 360), "rad": 4 * lines / _TURN_RAD}
+    if pitch is not None:
+        states |= {name: 4 * length / pitch.value for name, length in _METRES.items()}
+    return states
+
+
 @dataclass(frozen=True, slots=True)
 class Scale:
     """What the decoder's and the encoder's own units mean for one contract and one encoder.
 
     Attributes:
         period_ps: clock period.
-        clocks: length of each decoder unit of time, in clocks.
+        clocks: length of each decoder unit of time, in clocks (no entry: there is no decoder).
         states: length of each distance unit, in states (no entry: the unit has no meaning here).
     """
 
@@ -127,8 +146,14 @@ class Scale:
     states: dict[str, Fraction]
 
     @classmethod
-    def of(cls, contract: Contract, lines: int | None) -> Scale:
-        """Build the scale for a decoder and an encoder with ``lines`` cycles a revolution (None: not stated)."""
+    def of(cls, contract: Contract | None, lines: int | None, pitch: Quantity | None = None) -> Scale:
+        """Build the scale for a decoder (None: physical units only) and an encoder.
+
+        ``lines`` are its cycles a revolution, ``pitch`` is the length of a cycle of a linear one (None: not stated).
+        """
+        states = _disc_units(lines, pitch)
+        if contract is None:
+            return cls(NOMINAL_PERIOD_PS, {}, states)
         filtering, count = contract.filter, contract.count
         clocks = {
             "clocks": 1,
@@ -140,10 +165,6 @@ class Scale:
             "pass": filtering.passes,
             "settle": contract.settle_clocks,
         }
-        states: dict[str, Fraction] = {"states": Fraction(1), "cycles": Fraction(4)}
-        if lines is not None:
-            states["rev"] = Fraction(4 * lines)
-            states["deg"] = Fraction(4 * lines, 360)
         if count is not None:
             states["overflow"] = Fraction((count.highest - contract.start.count + 1) * count.states_per_count)
             states["underflow"] = Fraction((contract.start.count - count.lowest + 1) * count.states_per_count)
@@ -152,12 +173,22 @@ class Scale:
     def _unit_ps(self, unit: str) -> Fraction:
         if unit in _TIME_PS:
             return Fraction(_TIME_PS[unit])
+        if unit not in self.clocks:
+            msg = f"the unit {unit!r} needs a decoder; name its file after the profile's"
+            raise UnfitError(msg)
         return Fraction(self.clocks[unit] * self.period_ps)
+
+    @staticmethod
+    def rate_per_ps(quantity: Quantity) -> float:
+        """A rate as a number per ps."""
+        return float(quantity.value / PS_PER_S)
 
     def _unit_states(self, unit: str) -> Fraction:
         if unit not in self.states:
-            if unit in ("rev", "deg"):
+            if unit in ("rev", "deg", "rad"):
                 msg = f"the unit {unit!r} needs the encoder's line count: add `encoder: {{lines: 1024}}` to the profile"
+            elif unit in _METRES:
+                msg = f"the unit {unit!r} needs the length of a cycle: add `encoder: {{pitch: 20 um}}` to the profile"
             else:
                 msg = f"the unit {unit!r} needs a decoder with a count output"
             raise UnfitError(msg)
@@ -184,7 +215,7 @@ class Scale:
         return quantity.value * self._unit_states(quantity.distance)
 
     def per_time(self, quantity: Quantity) -> Fraction:
-        """A speed in states/ps or an acceleration in states/ps², exact.
+        """A speed in states/ps, an acceleration in states/ps² or a jerk in states/ps³, exact.
 
         Raises:
             UnfitError: the unit has no meaning for this decoder and encoder, or its time is zero clocks long.

@@ -5,7 +5,7 @@ from __future__ import annotations
 import shutil
 import tempfile
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 
 import numpy as np
@@ -31,7 +31,7 @@ class ProfileResult:
     """The result of one profile.
 
     ``verdict``: ``pass``, ``fail``, ``left-out`` (``reason`` says why), ``empty`` (it compared nothing) or ``not-run`` (the
-    simulator failed first).
+    simulator failed first). ``undetectable``: what it did that no decoder of A and B could notice, in words.
     """
 
     name: str
@@ -41,6 +41,7 @@ class ProfileResult:
     clocks: int = 0
     score: Score | None = None
     reason: str = ""
+    undetectable: tuple[str, ...] = ()
 
     @property
     def findings(self) -> tuple[Finding, ...]:
@@ -123,21 +124,23 @@ def verify(contract: Contract, planned: Plan, simulator: Simulator, out: Path, p
             results.append(_judged(contract, stimulus, played.traces.get(n)))
         except SimulatorError as error:
             failure = failure or error
-            common = (stimulus.seed, stimulus.edges, stimulus.periods)
-            results.append(ProfileResult(stimulus.name, "not-run", *common, reason=str(error)))
+            results.append(replace(_unjudged(stimulus), reason=str(error)))
     if failure is None:
         shutil.rmtree(folder)
     return Results(simulator, (*results, *planned.left_out), failure)
 
 
 def _judged(contract: Contract, stimulus: Stimulus, trace_file: Path | None) -> ProfileResult:
-    common = (stimulus.seed, stimulus.edges, stimulus.periods)
     if trace_file is None:
-        return ProfileResult(stimulus.name, "not-run", *common, reason="the simulator failed before its end")
+        return _unjudged(stimulus)
     result = score(contract, stimulus, trace_file)
-    if result.findings:
-        return ProfileResult(stimulus.name, "fail", *common, score=result)
-    if result.comparisons == 0:
+    judged = replace(_unjudged(stimulus), verdict="fail" if result.findings else "pass", score=result, reason="")
+    if result.comparisons == 0 and not result.findings:
         reason = "nothing was compared: the contract leaves everything open that this profile does"
-        return ProfileResult(stimulus.name, "empty", *common, score=result, reason=reason)
-    return ProfileResult(stimulus.name, "pass", *common, score=result)
+        return replace(judged, verdict="empty", reason=reason)
+    return judged
+
+
+def _unjudged(stimulus: Stimulus) -> ProfileResult:
+    common = (stimulus.name, "not-run", stimulus.seed, stimulus.edges, stimulus.periods)
+    return ProfileResult(*common, reason="the simulator failed before its end", undetectable=stimulus.undetectable)

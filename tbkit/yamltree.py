@@ -100,6 +100,11 @@ class Entry:
         return not any(re.match(rf"{re.escape(self.path)}($|[.\[])", path) for path in self._log.unsound)
 
     @property
+    def file(self) -> str:
+        """The file it stands in, as it was named."""
+        return self._log.file
+
+    @property
     def is_map(self) -> bool:
         return isinstance(self._node, yaml.MappingNode)
 
@@ -177,11 +182,12 @@ class Entry:
         return self.convert(read, "")
 
     def quantity(self, kind: str, sign: str = "positive") -> units.Quantity:
-        """A quantity of ``kind`` whose ``sign`` is ``positive``, ``not negative`` or ``not zero``."""
+        """A quantity of ``kind`` whose ``sign`` is ``positive``, ``not negative``, ``not zero`` or ``any``."""
 
         def read(text: str) -> units.Quantity:
             quantity = units.parse(text, kind)
-            fits = {"positive": quantity.value > 0, "not negative": quantity.value >= 0, "not zero": quantity.value != 0}
+            value = quantity.value
+            fits = {"positive": value > 0, "not negative": value >= 0, "not zero": value != 0, "any": True}
             if not fits[sign]:
                 msg = f"found {quoted(text)}, expected {units.a_kind(kind)} that is {sign}"
                 raise ValueError(msg)

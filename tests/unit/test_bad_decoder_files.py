@@ -564,7 +564,7 @@ PROFILE_TREE = yaml.load(
     disturb:
       - glitch: {on: a, width: 1 pass, times: 60}
       - bounce: {on: b, for: [1 clocks, 2 dwell], pulses: 1..6}
-      - missing: {on: b, pulses: [6, 14]}
+      - missing: {on: b, edges: [6, 14]}
     """,
     Loader=yaml.BaseLoader,  # noqa: S506  # it makes texts only
 )

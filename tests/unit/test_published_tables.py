@@ -12,7 +12,7 @@ from contractgrid import contract
 
 from tbkit.contract import Contract, Filter, Index
 from tbkit.counting import counted
-from tbkit.encoder import IdealEdges, Line
+from tbkit.encoder import Edges, Line
 from tbkit.expectation import Events
 from tbkit.lineoracle import expect, filtered, sample
 from tbkit.motion import Crossings
@@ -40,7 +40,7 @@ def stimulus(a: Line, b: Line, index: Line | None = None, periods: int = 0) -> S
     lines = {"a": a, "b": b, "index": index or Line(0, NONE)}
     last = max([int(each.toggles_ps[-1]) // P for each in lines.values() if len(each.toggles_ps)], default=0)
     still = {"reset": Line(0, NONE), "clear": Line(0, NONE)}
-    ideal = IdealEdges(lines, Crossings(NONE, NONE, np.zeros(0, dtype=bool)), 0.5, None)
+    ideal = Edges(lines, Crossings(NONE, NONE, np.zeros(0, dtype=bool)), 0.5, (), exact_index=True)
     zero = np.zeros(1, dtype=np.int64)
     return Stimulus("x", 1, P, lines, still, ideal, 0, None, periods or last + 30, Unfold(zero, zero), power_up=True)
 

@@ -11,7 +11,7 @@ import pytest
 
 from tbkit.contract import Clock, Contract, Count, Design, Filter, Latency, Port, Reset, Span, Start
 from tbkit.errors import UnfitError
-from tbkit.profile import Action, Bounce, Drive, Encoder, Glitch, IndexMark, Missing, Move, Profile, Repeat, Rest, Walk
+from tbkit.profile import Action, Bounce, Drive, Encoder, Glitch, IndexMark, Missing, Move, Profile, Repeat, Rest, Walk, Where
 from tbkit.stimulus import Stimulus, compile_stimulus
 from tbkit.units import parse
 
@@ -53,7 +53,7 @@ def played(*motion: Action, contract: Contract = CONTRACT, seed: int = 1, **more
 
 UNFOLDED = replace(CONTRACT, timers=True)
 WALK = Walk(parse("300 states", "distance"), parse("0.2 states/dwell", "speed"), parse("1 states/dwell", "speed"), 1, 8)
-GLITCHES = {line: Glitch(line, parse("1.5 clocks", "time"), 20) for line in ("a", "b")}
+GLITCHES = {line: Glitch((line,), *[parse("1.5 clocks", "time")] * 2, Where("times", 20)) for line in ("a", "b")}
 BOUNCE = Bounce("b", parse("0.2 us", "time"), parse("0.9 us", "time"), 1, 4)
 # Random everywhere, with rests long enough to be shortened.
 LIVELY = (WALK, rest("1 ms"), WALK, rest("77.7 us"), Drive("reset", parse("6.3 clocks", "time"), None), move("-20 states"))
@@ -326,7 +326,7 @@ def test_bounces() -> None:
 def test_missing_pulses() -> None:
     """Pulses 2 and 4 of line A lose both their edges; from then on the lines no longer tell where the shaft is."""
     clean = played(move("40 states"), contract=UNFOLDED).lines["a"].toggles_ps.tolist()
-    stimulus = played(move("40 states"), disturb=(Missing("a", (4, 2, 99)),), contract=UNFOLDED)
+    stimulus = played(move("40 states"), disturb=(Missing("a", Where("edges", numbers=(13, 5, 99))),), contract=UNFOLDED)
     assert stimulus.lines["a"].toggles_ps.tolist() == [*clean[:2], *clean[4:6], *clean[8:]]
     assert stimulus.lost_ps == clean[2]
 

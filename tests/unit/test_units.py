@@ -189,11 +189,14 @@ def test_published_fast_encoder() -> None:
 # ---- refusals
 
 TIME = "expected a number and a unit for a time: s, ms, us, ns, ps, clocks, dwell, shortest, reject, pass, settle"
-DISTANCE = "expected a number and a unit for a distance: states, cycles, rev, deg, overflow, underflow"
+DISTANCE = "expected a number and a unit for a distance: states, cycles, rev, deg, rad, m, mm, um, overflow, underflow"
 SPEED = (
-    "expected a number and a unit for a speed: rpm, rev/s, deg/s, Hz (cycles per second), or any distance/time such as states/dwell"
+    "expected a number and a unit for a speed: rpm, rev/s, deg/s, rad/s, mm/s, m/s, Hz (cycles per second),"
+    " or any distance/time such as states/dwell"
 )
-ACCELERATION = "expected a number and a unit for an acceleration: rev/s2, deg/s2, or any distance/time2 such as states/ms2"
+ACCELERATION = (
+    "expected a number and a unit for an acceleration: rev/s2, deg/s2, rad/s2, m/s2, or any distance/time2 such as states/ms2"
+)
 
 
 @pytest.mark.parametrize(
