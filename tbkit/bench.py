@@ -240,6 +240,7 @@ def _play_group(
         "top": BENCH,
         "build_folder": str(ready.folder),
         "job_folder": str(folder),
+        "zeroed": contract.start.zeroed and ready.simulator.four_state,
     }
     seconds = RUN_SECONDS + sum(stimuli[n].periods for n in group) / SLOWEST_CLOCKS_PER_SECOND
     code, log = _launch(request, folder, ready.simulator, seconds)

@@ -12,6 +12,15 @@ from pathlib import Path
 #: Name of the module that the tool puts around a decoder.
 BENCH = "tbkit_bench"
 
+#: What a profile does to an input, with the role of that input.
+DEEDS = {
+    "clear": "clear-error",
+    "zero": "clear-count",
+    "preload": "preload",
+    "disable": "enable",
+    "disarm": "arm",
+}
+
 #: Line states AB in the order in which A leads B.
 A_LEADS_B = ("00", "10", "11", "01")
 
@@ -48,10 +57,44 @@ class Port:
 
 
 @dataclass(frozen=True, slots=True)
+class Slice:
+    """Bits ``high`` down to ``low`` of an output port; None: the whole port."""
+
+    port: str
+    high: int | None = None
+    low: int | None = None
+
+
+@dataclass(frozen=True, slots=True)
+class Output:
+    """One output: ``width`` bits, the most significant slice first; ``active_low`` inverts a single bit."""
+
+    name: str
+    slices: tuple[Slice, ...]
+    width: int = 1
+    active_low: bool = False
+
+
+@dataclass(frozen=True, slots=True)
 class Clock:
+    """The clock of the decoder; ``period_ps`` is the time in which everything here is counted.
+
+    Attributes:
+        port: empty for a decoder without a clock, which does not see the periods.
+        tick: an input that is up in the last of ``every`` clocks only, and without which the decoder does nothing: a period
+            is then ``every`` clocks long.
+    """
+
     port: str
     period_ps: int
     falling: bool = False
+    tick: Port | None = None
+    every: int = 1
+
+    @property
+    def edge_ps(self) -> int:
+        """Time between active edges of the port."""
+        return self.period_ps // self.every
 
 
 @dataclass(frozen=True, slots=True)
@@ -71,11 +114,13 @@ class Start:
         count: the count.
         rest_states: AB states in which the lines may rest while that is so.
         settle: clocks after the release from which motion is followed.
+        zeroed: registers are 0 at power-up, as in most FPGAs, also where the RTL does not say so.
     """
 
     count: int = 0
     rest_states: tuple[str, ...] = A_LEADS_B
     settle: int = 8
+    zeroed: bool = False
 
 
 @dataclass(frozen=True, slots=True)
@@ -85,6 +130,27 @@ class Constant:
     port: str
     value: int
     width: int = 1
+
+
+@dataclass(frozen=True, slots=True)
+class Input:
+    """An input that the profile acts on.
+
+    Attributes:
+        role: ``clear-error``, ``clear-count`` and ``preload`` (the count becomes ``value``), ``enable`` (without it nothing is
+            counted) or ``arm`` (without it the index does nothing).
+        edge: a clear or preload acts once, as it is asserted, not for as long as it is.
+        counts_last: a step in the same clock counts on from ``value`` instead of being lost.
+        resyncs: an enable starts to count from the state in which it finds the lines; otherwise what it makes of a motion that
+            it has not seen is its own business.
+    """
+
+    port: Port
+    role: str
+    value: int = 0
+    edge: bool = False
+    counts_last: bool = False
+    resyncs: bool = True
 
 
 @dataclass(frozen=True, slots=True)
@@ -99,8 +165,7 @@ class Count:
         lowest, highest: the ends of the count's range.
     """
 
-    port: str
-    width: int
+    output: Output
     signed: bool
     states_per_count: int
     at: str
@@ -108,6 +173,10 @@ class Count:
     overflow: str
     lowest: int
     highest: int
+
+    @property
+    def width(self) -> int:
+        return self.output.width
 
     @property
     def size(self) -> int:
@@ -119,31 +188,67 @@ class Count:
 class Direction:
     """``with_count``: means something only when the count (or step) moves; otherwise it always tells the last motion."""
 
-    port: str
+    output: Output
     forward_level: int
     with_count: bool
 
 
 @dataclass(frozen=True, slots=True)
-class Error:
-    """``sticky``: stays until cleared; otherwise one clock for each illegal transition."""
+class Step:
+    """Steps on one output, named ``step``, or on one for each way, named ``up`` and ``down``.
 
-    port: Port
-    sticky: bool
+    ``kind``: a ``pulse`` of one clock, a ``toggle``, or a ``level`` that rises with each step and falls before the next.
+    """
+
+    kind: str
+    outputs: tuple[Output, ...]
+
+
+@dataclass(frozen=True, slots=True)
+class Error:
+    """How illegal transitions are told.
+
+    Attributes:
+        kind: a ``pulse`` of one clock for each, ``sticky`` (stays until cleared) or a ``counter``.
+        wins: what a sticky error does when set and cleared at once: ``set``, ``clear`` or ``either``.
+        holds: a counter stops at its end instead of wrapping.
+    """
+
+    output: Output
+    kind: str
+    wins: str = "either"
+    holds: bool = False
+
+    @property
+    def sticky(self) -> bool:
+        return self.kind == "sticky"
 
 
 @dataclass(frozen=True, slots=True)
 class Index:
-    """The count becomes 0 by the index: while it is active (``edge``: once as it becomes so) with A and B at the given levels."""
+    """What the index does: while it is active (``edge``: once as it becomes so) with A and B at the given levels.
+
+    Attributes:
+        action: ``set`` (the count becomes ``value``), ``latch`` (``output`` takes the count) or ``pulse`` (``output`` is up
+            for one clock).
+        counts_last: a step in the same clock counts on from ``value`` instead of being lost.
+    """
 
     a: int | None = None
     b: int | None = None
     edge: bool = False
+    action: str = "set"
+    value: int = 0
+    counts_last: bool = False
+    output: Output | None = None
 
 
 @dataclass(frozen=True, slots=True)
 class Latency:
-    """From the first active clock edge that sees the cause (number 1) to the edge at which the output changes."""
+    """From the first active clock edge that sees the cause (number 1) to the edge at which the output changes.
+
+    ``clear`` is that of a clear-error input, ``inputs`` that of all others.
+    """
 
     count: Span
     direction: Span
@@ -151,10 +256,12 @@ class Latency:
     error: Span
     index: Span
     clear: Span
+    inputs: Span = Span(1, 1)
 
     @property
     def longest(self) -> int:
-        return max(self.count.max, self.direction.max, self.step.max, self.error.max, self.index.max, self.clear.max)
+        spans = (self.count, self.direction, self.step, self.error, self.index, self.clear, self.inputs)
+        return max(span.max for span in spans)
 
 
 @dataclass(frozen=True, slots=True)
@@ -186,16 +293,35 @@ class Contract:
     reset: Reset | None = None
     start: Start = field(default_factory=Start)
     constants: tuple[Constant, ...] = ()
-    clear_error: Port | None = None
+    inputs: tuple[Input, ...] = ()
     count: Count | None = None
     direction: Direction | None = None
-    step: Port | None = None
+    step: Step | None = None
     error: Error | None = None
     illegal_holds: bool = True
     index: Index | None = None
     filter: Filter = field(default_factory=Filter)
     shortest_state: int = 1
     timers: bool = False
+
+    def input(self, role: str) -> Input | None:
+        """The input with this role, if there is one."""
+        return next((one for one in self.inputs if one.role == role), None)
+
+    @property
+    def main_latency(self) -> Span:
+        """The count's latency, or that of the steps of a decoder without a count."""
+        return self.latency.count if self.count else self.latency.step
+
+    @property
+    def outputs(self) -> tuple[Output, ...]:
+        """Every output, in the order in which they are recorded."""
+        found = [self.count.output] if self.count else []
+        found += [self.direction.output] if self.direction else []
+        found += self.step.outputs if self.step else ()
+        found += [self.error.output] if self.error else []
+        found += [self.index.output] if self.index and self.index.output else []
+        return tuple(found)
 
     @property
     def states_per_count(self) -> int:

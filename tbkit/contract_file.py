@@ -22,11 +22,15 @@ from tbkit.contract import (
     Error,
     Filter,
     Index,
+    Input,
     Latency,
+    Output,
     Port,
     Reset,
+    Slice,
     Span,
     Start,
+    Step,
 )
 from tbkit.yamltree import Entry, Section, identifier_fault, load, one_of, quoted, whole_number
 
@@ -36,19 +40,19 @@ FORMAT = 1
 LONGEST_CLOCKS = 1_000_000
 VERILOG_SUFFIXES = (".v", ".sv")
 SHORTEST_PERIOD_PS = 8
+MOST_CLOCKS_A_TICK = 1_000_000
+#: What is called a clock of a decoder that has none.
+NO_CLOCK_PS = 1000
 
 _KEYS = (
     "tbkit", "decoder", "clock", "reset", "start", "lines", "inputs", "count", "direction", "step", "error", "illegal",
     "index", "latency", "filter", "shortest_state", "timers",
 )  # fmt: skip
-_ROLES = ("constant", "clear-error")
+_ROLES = ("constant", "clear-error", "clear-count", "preload", "enable", "arm")
+_INPUT_KEYS = ("port", "role", "value", "width", "active", "sense", "step_together", "resumes")
 # Words the format knows and this version does not act on yet: said so, never passed over.
-_LATER_KEYS = ("up", "down", "velocity", "enable", "latch")
-_LATER_ROLES = ("enable", "preload", "home", "clear", "latch", "tick")
-_LATER_STEP = ("level", "toggle")
-_LATER_ERROR = ("counter",)
-_LATER_INDEX = ("load", "latch", "pulse")
-_LATER_DIRECTION = ("with-step",)
+_LATER_KEYS = ("velocity", "latch")
+_LATER_ROLES = ("latch",)
 
 
 def _active_low(section: Section) -> bool:
@@ -69,6 +73,48 @@ def _bit(entry: Entry) -> Port:
         return Port(match.group(1), None if match.group(2) is None else int(match.group(2)))
 
     return entry.convert(read, Port(""))
+
+
+def _slice(entry: Entry) -> Slice:
+    """``pos``, ``status[3]`` or ``status[23:8]``."""
+
+    def read(text: str) -> Slice:
+        match = re.fullmatch(r"([^\[\]]+)(?:\[(\d{1,4})(?::(\d{1,4}))?\])?", text)
+        if match is None:
+            msg = f'found {quoted(text)}, expected a port such as pos, or bits of one such as "status[3]" or "status[23:8]"'
+            raise ValueError(msg)
+        name, high, low = match.groups()
+        if fault := identifier_fault(name):
+            raise ValueError(fault)
+        if high is None:
+            return Slice(name)
+        if low is not None and int(low) > int(high):
+            msg = f"found {quoted(text)}, with the lower bit first; write {quoted(f'{name}[{low}:{high}]')}"
+            raise ValueError(msg)
+        return Slice(name, int(high), int(low or high))
+
+    return entry.convert(read, Slice(""))
+
+
+def _one_bit(name: str, entry: Entry | None, *, active_low: bool = False) -> Output:
+    """An output of one bit: a port, or a bit of one."""
+    part = _slice(entry) if entry else Slice("")
+    if entry and part.high != part.low:
+        entry.problem(f"found {quoted(entry.text())}, which is more than one bit; expected a port or one bit of it")
+    return Output(name, (part,), 1, active_low)
+
+
+def _number(name: str, entry: Entry | None, width: int) -> Output:
+    """An output of several bits: a port, bits of one, or a list of such, the most significant first."""
+    if entry is None:
+        return Output(name, (Slice(""),), width)
+    parts = tuple(_slice(item) for item in entry.items()) if entry.is_list else (_slice(entry),)
+    sizes = [part.high - part.low + 1 for part in parts if part.high is not None and part.low is not None]
+    if len(parts) > 1 and len(sizes) < len(parts):
+        entry.problem('of several ports each needs its bits, as in ["pos_high[7:0]", "pos_low[7:0]"]')
+    elif sizes and sum(sizes) != width and entry.sound:
+        entry.problem(f"these are {sum(sizes)} bits, and the width is {width}")
+    return Output(name, parts, width)
 
 
 def _line(entry: Entry) -> Port:
@@ -211,10 +257,9 @@ class _Reader:
         if entry is None:
             return Clock("", 1000)
         if entry.is_word("none"):
-            entry.problem("a decoder without a clock is not supported by this version of tbkit")
-            return Clock("", 1000)
-        section = entry.section(("port", "rate", "edge"))
-        port = section.require("port", "clk")
+            return Clock("", NO_CLOCK_PS)
+        section = entry.section(("port", "rate", "edge", "tick"), or_word="none")
+        port, tick = section.require("port", "clk"), section.get("tick")
         rate = section.require("rate", "50 MHz")
         edge = section.get("edge")
         period_ps = 1000
@@ -226,9 +271,16 @@ class _Reader:
                     f"found {rate.text()!r}, expected a rate from 1 Hz to {units.PS_PER_S // SHORTEST_PERIOD_PS // 10**9} GHz"
                 )
                 period_ps = 1000
-        return Clock(
-            port.identifier() if port else "", period_ps, edge is not None and edge.choice(("rising", "falling")) == "falling"
-        )
+        ticks, every = self._tick(tick) if tick else (None, 1)
+        falling = edge is not None and edge.choice(("rising", "falling")) == "falling"
+        return Clock(port.identifier() if port else "", period_ps * every, falling, ticks, every)
+
+    @staticmethod
+    def _tick(entry: Entry) -> tuple[Port, int]:
+        section = entry.section(("port", "every", "active"))
+        port, every = section.require("port", "tick"), section.require("every", "8")
+        name = Port(port.identifier() if port else "", None, _active_low(section))
+        return name, every.integer(2, MOST_CLOCKS_A_TICK) if every else 2
 
     def reset(self) -> Reset | None:
         entry = self.top.require("reset", "{port: rst_n, active: low, kind: async, clocks: 4}` or `reset: none")
@@ -249,8 +301,8 @@ class _Reader:
         entry = self.top.get("start")
         if entry is None:
             return Start()
-        section = entry.section(("count", "rest_states", "settle"))
-        count, states, settle = (section.get(key) for key in ("count", "rest_states", "settle"))
+        section = entry.section(("count", "rest_states", "settle", "power_up"))
+        count, states, settle, power_up = (section.get(key) for key in ("count", "rest_states", "settle", "power_up"))
         rest_states: tuple[str, ...] = A_LEADS_B
         if states is not None:
             if states.is_list:
@@ -261,6 +313,7 @@ class _Reader:
             count.integer(-(1 << 63), (1 << 63) - 1) if count else 0,
             rest_states,
             settle.integer(0, LONGEST_CLOCKS) if settle else Start().settle,
+            power_up is not None and power_up.choice(("as-is", "zero")) == "zero",
         )
 
     def lines(self) -> tuple[Port, Port, Port | None]:
@@ -271,40 +324,70 @@ class _Reader:
         a, b, index = section.require("a", "enc_a"), section.require("b", "enc_b"), section.get("index")
         return _line(a) if a else Port(""), _line(b) if b else Port(""), _line(index) if index else None
 
-    def inputs(self) -> tuple[tuple[Constant, ...], Port | None]:
+    def inputs(self) -> tuple[tuple[Constant, ...], tuple[Input, ...]]:
         entry = self.top.get("inputs")
         constants: list[Constant] = []
-        clear: Port | None = None
+        acting: list[Input] = []
         for name, value in entry.pairs("a map of input names and values") if entry else []:
-            section = value.section(("port", "role", "value", "width", "active")) if value.is_map else None
+            section = value.section(_INPUT_KEYS) if value.is_map else None
             role_entry = section.get("role") if section else None
             role = role_entry.choice(_ROLES, _LATER_ROLES) if role_entry else "constant"
             port_entry = section.get("port") if section else None
             port = port_entry.identifier() if port_entry else name
             if port_entry is None and (fault := identifier_fault(name)):
                 value.problem(f"{fault}; or any word, with {{port: NAME}}")
-            if section is not None and role == "clear-error":
-                if clear is not None:
-                    value.problem("a second clear-error input; one is supported")
-                for key in ("value", "width"):
-                    if extra := section.get(key):
-                        extra.problem("a clear-error input has no constant value; the tool drives it")
-                clear = Port(port, None, _active_low(section))
-                continue
             if section is None:
                 constants.append(Constant(port, value.integer(0, 1, "; a wider input is written {value: 5, width: 3}")))
+            elif role_entry and not role_entry.sound:
                 continue
-            if role_entry and not role_entry.sound:
-                continue
-            width_entry, level = section.get("width"), section.require("value", "1")
-            width = width_entry.integer(1, 64) if width_entry else 1
-            if width_entry and not width_entry.sound:
-                width = 64
-            if extra := section.get("active"):
-                extra.problem("a constant is driven as it is written; `active` belongs to inputs with another role")
-            hint = "" if width_entry else "; a wider input needs its `width`"
-            constants.append(Constant(port, level.integer(0, (1 << width) - 1, hint) if level else 0, width))
-        return tuple(constants), clear
+            elif role == "constant":
+                constants.append(self._constant(section, port))
+            else:
+                if any(one.role == role for one in acting):
+                    value.problem(f"a second {role} input; one is supported")
+                acting.append(self._acting(section, port, role))
+        return tuple(constants), tuple(acting)
+
+    @staticmethod
+    def _constant(section: Section, port: str) -> Constant:
+        width_entry, level = section.get("width"), section.require("value", "1")
+        width = width_entry.integer(1, 64) if width_entry else 1
+        if width_entry and not width_entry.sound:
+            width = 64
+        for key in ("active", "sense", "step_together", "resumes"):
+            if extra := section.get(key):
+                extra.problem(f"a constant is driven as it is written; `{key}` belongs to inputs with another role")
+        hint = "" if width_entry else "; a wider input needs its `width`"
+        return Constant(port, level.integer(0, (1 << width) - 1, hint) if level else 0, width)
+
+    @staticmethod
+    def _acting(section: Section, port: str, role: str) -> Input:
+        """An input that the tool drives; keys that its role has no use for are problems."""
+        sets = ("clear-count", "preload")
+        for key, roles in (
+            ("value", ("preload",)),
+            ("width", ()),
+            ("sense", sets),
+            ("step_together", sets),
+            ("resumes", ("enable",)),
+        ):
+            if (extra := section.get(key)) and role not in roles:
+                what = f"`{key}` belongs to {' and '.join(roles)} inputs" if roles else "the tool drives it"
+                extra.problem(f"this has no meaning for an input with the role {role}: {what}")
+        value = section.require("value", "1000") if role == "preload" else None
+        sense, together, resumes = section.get("sense"), section.get("step_together"), section.get("resumes")
+        edge = sense is not None and sense.choice(("level", "edge")) == "edge"
+        counts_last = together is not None and together.choice(("lost", "counted")) == "counted"
+        if counts_last and together and not edge:
+            together.problem("`step_together` needs `sense: edge`; while the level lasts the count does not move")
+        return Input(
+            Port(port, None, _active_low(section)),
+            role,
+            value.integer(-(1 << 63), (1 << 63) - 1) if value else 0,
+            edge,
+            counts_last,
+            resumes is None or resumes.choice(("in-step", "anyhow")) == "in-step",
+        )
 
     def count(self) -> Count | None:
         entry = self.top.get("count")
@@ -342,8 +425,7 @@ class _Reader:
             if low >= high and entry.sound:
                 entry.problem(f"the range from {low} to {high} holds no two counts; `highest` must be above `lowest`")
         return Count(
-            port.identifier() if port else "",
-            width,
+            _number("count", port, width),
             signed,
             states_per_count,
             at.choice(A_LEADS_B) if at else "00",
@@ -361,54 +443,93 @@ class _Reader:
         port, forward = section.require("port", "dir"), section.require("forward", "1")
         valid = section.require("valid", "with-count")
         return Direction(
-            port.identifier() if port else "",
+            _one_bit("direction", port),
             forward.level() if forward else 1,
-            valid is not None and valid.choice(("always", "with-count"), _LATER_DIRECTION) == "with-count",
+            valid is not None and valid.choice(("always", "with-count", "with-step")) != "always",
         )
 
-    def step(self) -> Port | None:
+    def step(self) -> Step | None:
         entry = self.top.get("step")
         if entry is None:
             return None
-        section = entry.section(("port", "kind", "active"))
-        port, kind = section.require("port", "step"), section.require("kind", "pulse")
-        if kind:
-            kind.choice(("pulse",), _LATER_STEP)
-        return Port(port.identifier() if port else "", None, _active_low(section))
+        section = entry.section(("port", "up", "down", "kind", "active"))
+        kind = section.require("kind", "pulse")
+        low = _active_low(section)
+        names = ("up", "down") if section.get("up") or section.get("down") else ("step",)
+        if names == ("up", "down") and (port := section.get("port")):
+            port.problem("`port` is for steps both ways on one output; `up` and `down` are for one output each way")
+        outputs = [
+            _one_bit(name, section.require("port" if name == "step" else name, example), active_low=low)
+            for name, example in zip(names, ("step",) if len(names) == 1 else ("count_up", "count_down"), strict=True)
+        ]
+        return Step(kind.choice(("pulse", "toggle", "level")) if kind else "pulse", tuple(outputs))
 
     def error(self) -> Error | None:
         entry = self.top.get("error")
         if entry is None:
             return None
-        section = entry.section(("port", "kind", "active"))
-        port, kind = section.require("port", "err"), section.require("kind", "pulse")
-        return Error(
-            Port(port.identifier() if port else "", None, _active_low(section)),
-            kind is not None and kind.choice(("pulse", "sticky"), _LATER_ERROR) == "sticky",
-        )
+        section = entry.section(("port", "kind", "active", "wins", "width", "overflow"))
+        port, kind_entry = section.require("port", "err"), section.require("kind", "pulse")
+        kind = kind_entry.choice(("pulse", "sticky", "counter")) if kind_entry else "pulse"
+        wins, width, overflow, active = (section.get(key) for key in ("wins", "width", "overflow", "active"))
+        for key, given, owner in (("wins", wins, "sticky"), ("width", width, "counter"), ("overflow", overflow, "counter")):
+            if given and kind != owner:
+                given.problem(f"`{key}` belongs to `kind: {owner}`; this one is {kind}")
+        if kind != "counter":
+            output = _one_bit("error", port, active_low=_active_low(section))
+            return Error(output, kind, wins.choice(("set", "clear", "either")) if wins else "either")
+        if active:
+            active.problem("`active` belongs to an output of one bit; a counter is a number")
+        bits = section.require("width", "8")
+        output = _number("error", port, bits.integer(1, 32) if bits else 1)
+        return Error(output, kind, holds=overflow is not None and overflow.choice(("wrap", "hold")) == "hold")
 
-    def index(self) -> Index | None:
+    def index(self, count: Count | None) -> Index | None:
         entry = self.top.get("index")
         if entry is None:
             return None
-        section = entry.section(("action", "when", "sense"))
-        action, when, sense = section.require("action", "zero"), section.get("when"), section.get("sense")
-        if action:
-            action.choice(("zero",), _LATER_INDEX)
+        section = entry.section(("action", "value", "port", "active", "when", "sense", "step_together"))
+        action_entry, when, sense = section.require("action", "zero"), section.get("when"), section.get("sense")
+        action = action_entry.choice(("zero", "load", "latch", "pulse")) if action_entry else "zero"
         gate = when.section(("a", "b")) if when else None
         a, b = (gate.get("a"), gate.get("b")) if gate else (None, None)
         return Index(
             a.level() if a else None,
             b.level() if b else None,
             sense is not None and sense.choice(("level", "edge")) == "edge",
+            *self._index_action(section, action, count),
         )
+
+    @staticmethod
+    def _index_action(section: Section, action: str, count: Count | None) -> tuple[str, int, bool, Output | None]:
+        value, port, active = section.get("value"), section.get("port"), section.get("active")
+        together, sense = section.get("step_together"), section.get("sense")
+        owners = (("value", value, ("load",)), ("port", port, ("latch", "pulse")), ("active", active, ("pulse",)))
+        for key, given, actions in owners:
+            if given and action not in actions:
+                given.problem(f"`{key}` belongs to the action {' or '.join(actions)}; this one is {action}")
+        for entry in (together, sense):
+            if entry and action not in ("zero", "load"):
+                entry.problem("this belongs to the actions zero and load; latch and pulse act once, as the index becomes active")
+        if together and not (sense and sense.is_word("edge")):
+            together.problem("`step_together` needs `sense: edge`; while the level lasts the count does not move")
+        counts_last = together is not None and together.choice(("lost", "counted")) == "counted"
+        number = value.integer(-(1 << 63), (1 << 63) - 1) if value else 0
+        if action == "load" and value is None:
+            section.require("value", "100")
+        if action in ("zero", "load"):
+            return "set", number, counts_last, None
+        port = section.require("port", "captured" if action == "latch" else "home")
+        if action == "pulse":
+            return action, 0, False, _one_bit("index", port, active_low=_active_low(section))
+        return action, 0, False, _number("index", port, count.width if count else 64)
 
     def latency(self) -> Latency:
         entry = self.top.require("latency", "{count: 3}")
         if entry is None:
             none = Span(0, 0)
             return Latency(none, none, none, none, none, none)
-        section = entry.section(("count", "direction", "step", "error", "index", "clear"))
+        section = entry.section(("count", "direction", "step", "error", "index", "clear", "inputs"))
         given = {key: _span(value) for key in section.keys if (value := section.get(key))}
         for key in given:
             value = section.get(key)
@@ -420,7 +541,8 @@ class _Reader:
             entry.problem(f"the key {needed!r} is missing; write for example `{needed}: 3`")
         main = given.get("count", given.get("step", Span(0, 0)))
         direction, step, error, index = (given.get(key, main) for key in ("direction", "step", "error", "index"))
-        return Latency(main, direction, step, error, index, given.get("clear", Span(1, 1)))
+        one = Span(1, 1)
+        return Latency(main, direction, step, error, index, given.get("clear", one), given.get("inputs", one))
 
     def filter(self) -> Filter:
         entry = self.top.get("filter")
@@ -450,10 +572,11 @@ def read_contract(path: Path) -> Contract:
     if version:
         version.choice((str(FORMAT),), instead=", the format that this version of tbkit reads")
     reader = _Reader(top, path.parent)
-    constants, clear = reader.inputs()
+    constants, inputs = reader.inputs()
     a, b, index_line = reader.lines()
     illegal, shortest, timers = top.get("illegal"), top.get("shortest_state"), top.get("timers")
     illegal_count = illegal.section(("count",)).require("count", "hold") if illegal else None
+    count = reader.count()
     contract = Contract(
         path,
         reader.design(),
@@ -465,13 +588,13 @@ def read_contract(path: Path) -> Contract:
         reader.reset(),
         reader.start(),
         constants,
-        clear,
-        reader.count(),
+        inputs,
+        count,
         reader.direction(),
         reader.step(),
         reader.error(),
         illegal_count is None or illegal_count.choice(("hold", "any")) == "hold",
-        reader.index(),
+        reader.index(count),
         reader.filter(),
         shortest.integer(1, LONGEST_CLOCKS) if shortest else 1,
         timers is not None and timers.flag(),
@@ -494,42 +617,63 @@ def _check_together(contract: Contract, top: Section) -> None:
         note("a decoder needs a `count` or a `step` output: without one there is nothing to check", "direction")
     if contract.index is not None and contract.index_line is None:
         note("an index action needs the index line; add it as `lines: {index: enc_z}`", "index", "lines")
-    if contract.index is not None and contract.count is None:
-        note("the index action `zero` needs a `count` output", "index")
-    if contract.clear_error is not None and (contract.error is None or not contract.error.sticky):
+    if contract.index is not None and contract.index.action != "pulse" and contract.count is None:
+        note("an index action other than `pulse` needs a `count` output", "index")
+    if contract.index is not None and contract.count is not None and not _in_range(contract.count, contract.index.value):
+        note(f"the value {contract.index.value} {_outside(contract.count)}", "index", "count")
+    if contract.input("clear-error") and (contract.error is None or not contract.error.sticky):
         note("a clear-error input needs `error: {kind: sticky}`", "inputs", "error")
-    if contract.count is not None and not contract.count.lowest <= contract.start.count <= contract.count.highest:
-        note(
-            f"the start count {contract.start.count} is outside the count's range"
-            f" {contract.count.lowest} to {contract.count.highest}",
-            "start",
-            "count",
-        )
+    for role in ("clear-count", "preload"):
+        one = contract.input(role)
+        if one and contract.count is None:
+            note(f"a {role} input needs a `count` output", "inputs")
+        elif one and contract.count and not _in_range(contract.count, one.value):
+            note(f"the value {one.value} of the {role} input {_outside(contract.count)}", "inputs", "count")
+    if contract.input("arm") and contract.index is None:
+        note("an arm input needs an `index` action", "inputs")
+    if contract.count is not None and not _in_range(contract.count, contract.start.count):
+        note(f"the start count {contract.start.count} {_outside(contract.count)}", "start", "count")
+    if contract.clock.tick and contract.reset and contract.reset.clocks < 2:
+        note("with a tick, write how many ticks the reset lasts, 2 at least", "reset")
     _check_ports(contract, note)
 
 
+def _in_range(count: Count, value: int) -> bool:
+    return count.lowest <= value <= count.highest
+
+
+def _outside(count: Count) -> str:
+    return f"is outside the count's range {count.lowest} to {count.highest}"
+
+
 def _check_ports(contract: Contract, note: Callable[..., None]) -> None:
-    """Every port is used once, and a vector port is used by bits only."""
+    """Every bit of a port is used once; a port that is used whole is used once."""
     ports: list[tuple[str, Port | None]] = [
         ("clock", Port(contract.clock.port)),
+        ("clock", contract.clock.tick),
         ("reset", contract.reset.port if contract.reset else None),
         ("lines", contract.a),
         ("lines", contract.b),
         ("lines", contract.index_line),
-        ("inputs", contract.clear_error),
+        *(("inputs", one.port) for one in contract.inputs),
         *(("inputs", Port(constant.port)) for constant in contract.constants),
-        ("count", Port(contract.count.port) if contract.count else None),
-        ("direction", Port(contract.direction.port) if contract.direction else None),
-        ("step", contract.step),
-        ("error", contract.error.port if contract.error else None),
     ]
-    seen: dict[str, list[tuple[int | None, str]]] = {}
-    for key, port in ports:
-        if port is None or not port.name:
+    keys = {"up": "step", "down": "step"}
+    used = [(key, Slice(port.name, port.bit, port.bit)) for key, port in ports if port is not None]
+    used += [(keys.get(output.name, output.name), one) for output in contract.outputs for one in output.slices]
+    seen: dict[str, list[tuple[Slice, str]]] = {}
+    for key, one in used:
+        if not one.port:
             continue
-        uses = seen.setdefault(port.name, [])
-        clash = next((other for bit, other in uses if bit is None or port.bit is None or bit == port.bit), None)
+        uses = seen.setdefault(one.port, [])
+        clash = next((other for before, other in uses if _overlap(before, one)), None)
         if clash:
-            shown = port.name if port.bit is None else f"{port.name}[{port.bit}]"
-            note(f"the port {shown!r} is used twice" + (f"; `{clash}` uses it already" if clash != key else ""), key)
-        uses.append((port.bit, key))
+            bits = "" if one.high is None else f"[{one.high}]" if one.high == one.low else f"[{one.high}:{one.low}]"
+            note(f"the port {one.port + bits!r} is used twice" + (f"; `{clash}` uses it already" if clash != key else ""), key)
+        uses.append((one, key))
+
+
+def _overlap(one: Slice, other: Slice) -> bool:
+    if one.high is None or one.low is None or other.high is None or other.low is None:
+        return True
+    return one.low <= other.high and other.low <= one.high

@@ -16,24 +16,24 @@ def into_range(count: Count, value: int) -> int:
     return value - (1 << 64) if value >= 1 << 63 else value
 
 
-def counted(count: Count, step: Int64s, zero: Bools, base: int) -> Int64s:
-    """int64[n]: the count after each step from ``base`` on; where ``zero`` it is 0 whatever the step."""
+def counted(count: Count, step: Int64s, sets: Bools, to: Int64s, base: int) -> Int64s:
+    """int64[n]: the count after each step from ``base`` on; where ``sets`` it is ``to``, whatever the step."""
     if len(step) == 0:
         return step
     total = np.cumsum(step)
-    last_zero = np.maximum.accumulate(np.where(zero, np.arange(len(step)), -1))
-    zeroed = last_zero >= 0
+    last = np.maximum.accumulate(np.where(sets, np.arange(len(step)), -1))
+    is_set = last >= 0
+    at = np.maximum(last, 0)
     # Sums of steps stay far below 2^63 even where the base does not, so they are brought into range apart.
-    moved = np.where(zeroed, total - total[np.maximum(last_zero, 0)], total)
-    exact = moved + np.where(zeroed, 0, base)
+    exact = np.where(is_set, total - total[at] + to[at], total + base)
     if count.overflow == "hold":
         # Near the ends of int64 the sum itself could wrap.
         if abs(base) < 1 << 62 and exact.min() >= count.lowest and exact.max() <= count.highest:
             return exact
-        values, value = [], base
-        for by, to_zero in zip(step.tolist(), zero.tolist(), strict=True):
-            value = 0 if to_zero else min(max(value + by, count.lowest), count.highest)
-            values.append(value)
+        values, now = [], base
+        for by, is_set_here, value in zip(step.tolist(), sets.tolist(), to.tolist(), strict=True):
+            now = min(max(value if is_set_here else now + by, count.lowest), count.highest)
+            values.append(now)
         return np.array(values, dtype=np.int64)
     if count.overflow == "modulo":
         return np.asarray(exact % count.size)

@@ -258,6 +258,9 @@ def _together(before: Disturbed, together: Together, scene: Scene, rng: np.rando
 
 def _press(before: Disturbed, press: Press, scene: Scene, rng: np.random.Generator) -> Disturbed:
     time_ps, offset = scene.scale.time_ps(press.time), scene.scale.time_ps(press.offset)
+    if press.of_answer:
+        answer = "answer of clear" if press.signal == "clear" else "answer"
+        offset += scene.scale.clocks.get(answer, 0) * scene.scale.period_ps
     presses: list[tuple[str, int, int]] = []
     for moment in scene.moments(press.where, rng, f"presses of {press.time}", time_ps).tolist():
         begin = max(moment + offset, scene.span_ps[0])

@@ -6,7 +6,7 @@ from collections.abc import Callable
 from dataclasses import replace
 from fractions import Fraction
 
-from tbkit.contract import A_LEADS_B
+from tbkit.contract import A_LEADS_B, DEEDS
 from tbkit.encoder import LINES
 from tbkit.presets import BOUNCES
 from tbkit.profile import Aperture, Bounce, Disturbance, Glitch, Invert, Missing, Press, Stuck, Swap, Together, Unknown, Where
@@ -105,14 +105,15 @@ def _together(entry: Entry) -> Disturbance:
 
 def _press(signal: str) -> Callable[[Entry], Disturbance]:
     def read(entry: Entry) -> Disturbance:
-        section = entry.section(("for", "offset", *_WHERE))
-        offset = section.get("offset")
+        section = entry.section(("for", "offset", "of", *_WHERE))
+        offset, of = section.get("offset"), section.get("of")
         none = Quantity(Fraction(0), "", "s", 1)
         return Press(
             signal,
             quantity(section, "for", "time", "4 clocks"),
             offset.quantity("time", "any") if offset else none,
             _where(section, "5"),
+            of is not None and of.choice(("edge", "answer")) == "answer",
         )
 
     return read
@@ -135,8 +136,7 @@ _DISTURBANCES: dict[str, Callable[[Entry], Disturbance]] = {
     "swap": _swap,
     "invert": _invert,
     "together": _together,
-    "reset": _press("reset"),
-    "clear": _press("clear"),
+    **{signal: _press(signal) for signal in ("reset", *DEEDS)},
     "aperture": _aperture,
     "unknown": _unknown,
 }

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from bisect import bisect_left
+from collections.abc import Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -68,27 +69,37 @@ class Activity:
 
 
 def releases(
-    contract: Contract, stimulus: Stimulus, events: Events, spans: list[tuple[int, int]], activity: Activity, index_active: Int64s
+    contract: Contract,
+    stimulus: Stimulus,
+    events: Events,
+    spans: list[tuple[int, int]],
+    activity: Activity,
+    index_active: Int64s,
+    set_spans: Sequence[tuple[int, int]],
 ) -> list[Release]:
     """Sort every (asserted, released) of ``spans`` by what may be said about the time after it.
 
     ``index_active``: int64, periods in which the index sets the count, among those in which something is released.
+    ``set_spans``: when an input sets the count.
     """
     found: list[Release] = []
     settle = contract.start.settle
+    set_to = contract.index.value if contract.index and contract.index.action == "set" else contract.start.count
     for begin, end in spans:
         # What the filter holds after a reset is known once each line has had a level for as long as always passes.
         near = np.searchsorted(activity.raw, [end - max(settle, contract.filter.passes), end + settle])
         event = int(np.searchsorted(events.period, end + settle))
         still = near[0] == near[1]
-        if contract.reset is not None and end - begin < contract.reset.clocks:
+        set_meanwhile = any(first <= end + settle and last >= begin for first, last in set_spans)
+        if set_meanwhile or (contract.reset is not None and end - begin < contract.reset.clocks):
             how = "elsewhere"
         elif not still:
-            how = "moving"
+            # What the index sets as a level meanwhile is one count more that may be right.
+            how = "elsewhere" if contract.start.count != set_to and end in index_active else "moving"
         elif _state_before(events, stimulus, event) not in contract.start.rest_states:
             how = "elsewhere"
         else:
-            how = "index" if contract.start.count != 0 and end in index_active else "rest"
+            how = "index" if contract.start.count != set_to and end in index_active else "rest"
         awake = end - 1 if how == "rest" else activity.known(end + settle, contract.filter.passes)
         found.append(Release(begin, end, awake, how))
     return found
@@ -166,7 +177,8 @@ class Cutter:
         quiet, event = self._quiet(release.awake, low, high)
         allowed: tuple[int, ...] | None = None
         if release.how == "index" and self.contract.index is not None:
-            allowed = (0, self.contract.start.count) if self.contract.index.edge else (0,)
+            index = self.contract.index
+            allowed = (index.value, self.contract.start.count) if index.edge else (index.value,)
             if int(np.searchsorted(self.events.period, end + settle)) != event:
                 allowed = None
         elif release.how == "moving" and release.awake == end + settle:
@@ -188,13 +200,14 @@ class Cutter:
         )
         sure = raw[1] - raw[0] == passed[1] - passed[0] and not events.open[first:event].any()
         sure = sure and (contract.illegal_holds or not events.illegal[first:event].any())
-        sure = sure and (contract.index is None or not (events.zero | events.enters_index)[first:event].any())
+        sure = sure and (contract.index is None or not (events.sets | events.enters_index)[first:event].any())
         if count is None or not sure or len(contract.start.rest_states) < 4 or last - first > MOST_MOMENTS:
             return None
         start = into_range(count, contract.start.count)
         found = {start} if last == event else set()
         for moment in range(first, last + 1):
-            values = counted(count, events.step[moment:event], events.zero[moment:event], start)
+            some = slice(moment, event)
+            values = counted(count, events.step[some], events.sets[some], events.to[some], start)
             found.add(int(values[-1]) if len(values) else start)
         return tuple(sorted(found))
 

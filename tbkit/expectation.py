@@ -25,9 +25,11 @@ class Events:
         moved: int64[n], +1, -1 or 0 states in the decoder's forward sense; 0 also for an illegal transition.
         step: int64[n], by how much the count moves.
         illegal: bool[n], both lines changed at once.
-        zero: bool[n], the index makes the count 0 here.
-        enters_index: bool[n], the index begins to make the count 0 here.
-        leaves_index: bool[n], the index stopped holding the count at 0 here.
+        sets: bool[n], the index or an input sets the count here.
+        to: int64[n], where it does: to what, a step in the same clock included.
+        by_input: bool[n], it is an input that does, which answers as fast as the count does.
+        enters_index: bool[n], the index becomes active here.
+        leaves_index: bool[n], the index has stopped being active here.
         open: bool[n], the contract leaves open what happens here, and with it the position; an event whose lines do not
             change only says that something may happen.
     """
@@ -38,7 +40,9 @@ class Events:
     moved: Int64s
     step: Int64s
     illegal: Bools
-    zero: Bools
+    sets: Bools
+    to: Int64s
+    by_input: Bools
     enters_index: Bools
     leaves_index: Bools
     open: Bools
@@ -87,7 +91,7 @@ class Expectation:
     Attributes:
         events: what the lines do.
         epochs: where the count is tied to events (the step, in a decoder without count).
-        step_epochs, error_epochs: where the step and the error are.
+        step_epochs, error_epochs, index_epochs: where the step, the error and the index's own output are.
         direction: levels of a direction output that is always valid.
         sticky_error: levels of a sticky error.
         open_periods: clock periods in which the count is not compared.
@@ -97,6 +101,7 @@ class Expectation:
     epochs: tuple[Epoch, ...]
     step_epochs: tuple[Epoch, ...]
     error_epochs: tuple[Epoch, ...]
+    index_epochs: tuple[Epoch, ...]
     direction: Hold | None
     sticky_error: Hold | None
     open_periods: int

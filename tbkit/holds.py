@@ -42,7 +42,8 @@ def sticky_levels(
 
     ``clears``: (first period asserted, first period not asserted).
     """
-    by, clear = contract.latency.error, contract.latency.clear
+    assert contract.error is not None
+    by, clear, wins = contract.latency.error, contract.latency.clear, contract.error.wins
     illegal = np.flatnonzero(events.illegal & ~events.open)
     unsure = [stretch for stretch in opens if not stretch.known]
     # First and last cause, first period it may act, first period it surely has, level (-1: unknown), event.
@@ -52,10 +53,15 @@ def sticky_levels(
     cleared: list[tuple[int, ...]] = []
     for begin, end in clears:
         first, sure = begin + clear.min, end - 1 + clear.max
-        # Set and clear together: which of them wins is not part of this contract.
         together = (sets[:, 3] >= first) & (sets[:, 2] <= sure)
-        sets[together, 4] = -1
-        cleared.append((begin, end - 1, first, sure, -1 if together.any() else 0, -1))
+        if wins != "either" and by.exact and clear.exact and (sets[together, 4] == 1).all():
+            # What is set while the clear lasts is cleared again, or never set; only with its end the two are at once.
+            sets = sets[~together | ((sets[:, 2] == sure) & (wins == "set"))]
+            cleared.append((begin, end - 1, first, sure, 0, -1))
+        else:
+            # Which of them wins is not part of this contract.
+            sets[together, 4] = -1
+            cleared.append((begin, end - 1, first, sure, -1 if together.any() else 0, -1))
     acts = np.concatenate([sets, np.array(cleared, dtype=np.int64).reshape(-1, 6)])
     for r in released:
         # What happens during a reset is nothing; what was on its way when it began does not arrive.

@@ -99,7 +99,12 @@ def play(request: dict[str, Any]) -> None:
         test_dir=folder,
         results_xml=str(folder / "results.xml"),
         plusargs=[f"+tbkit_folder={folder}"],
-        extra_env={"TBKIT_FOLDER": str(folder), "COCOTB_LOG_LEVEL": "WARNING", "COCOTB_REWRITE_ASSERTION_FILES": ""},
+        extra_env={
+            "TBKIT_FOLDER": str(folder),
+            "TBKIT_ZEROED": str(int(request["zeroed"])),
+            "COCOTB_LOG_LEVEL": "WARNING",
+            "COCOTB_REWRITE_ASSERTION_FILES": "",
+        },
         seed=1,
     )
 

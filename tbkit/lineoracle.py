@@ -15,6 +15,7 @@ from tbkit.encoder import Line
 from tbkit.epochs import Activity, Cutter, Open, releases
 from tbkit.expectation import Bools, Events, Expectation, Int64s
 from tbkit.holds import direction_levels, sticky_levels
+from tbkit.inputs import Acts, acts, within
 from tbkit.ordered import merged
 from tbkit.stimulus import Stimulus
 
@@ -205,7 +206,7 @@ def _opens(contract: Contract, lines: _Lines) -> list[Open]:
 def _unordered(contract: Contract, events: Events) -> list[Open]:
     """Where count and index answer with such different latencies that their order, and so the count, is open."""
     latency, gate = contract.latency, contract.index
-    if gate is None:
+    if gate is None or gate.action != "set":
         return []
     acting = np.flatnonzero((events.step != 0) | events.enters_index)
     period, zeroed, stepped = events.period[acting], events.enters_index[acting], events.step[acting] != 0
@@ -227,43 +228,74 @@ def _filter_lines(contract: Contract, sampled: dict[str, Changes]) -> _Lines:
     return _Lines(a, b, z, doubt_a, doubt_b, doubt_z)
 
 
-def make_events(contract: Contract, lines: _Lines, opens: list[Open]) -> Events:
-    """Merge the filtered lines into events; ``opens``: where the contract leaves open what happens."""
+def make_events(contract: Contract, lines: _Lines, opens: list[Open], by_inputs: Acts) -> Events:
+    """Merge the filtered lines, and what inputs do, into events; ``opens``: where the contract leaves open what happens."""
     unsure = np.array([(stretch.begin, stretch.end) for stretch in opens if not stretch.known], dtype=np.int64).reshape(-1, 2)
-    period = merged(lines.a.period, lines.b.period, lines.index.period, unsure[:, 0])
+    period = merged(lines.a.period, lines.b.period, lines.index.period, unsure[:, 0], by_inputs.begins())
     after_a, after_b, after_z = (line.level(period) for line in (lines.a, lines.b, lines.index))
     before_a, before_b, before_z = (line.level(period - 1) for line in (lines.a, lines.b, lines.index))
     before, after = 2 * before_a + before_b, 2 * after_a + after_b
-    active = _index_active(contract, after_a, after_b, after_z)
-    active_before = _index_active(contract, before_a, before_b, before_z)
+    active = _index_active(contract, after_a, after_b, after_z) & ~within(period, by_inputs.disarmed)
+    active_before = _index_active(contract, before_a, before_b, before_z) & ~within(period - 1, by_inputs.disarmed)
     enters, leaves = active & ~active_before, active_before & ~active
     # +1 where a stretch begins, -1 behind its end: above 0 inside.
     edges = np.zeros(len(period) + 1, dtype=np.int64)
     np.add.at(edges, np.searchsorted(period, unsure[:, 0]), 1)
     np.add.at(edges, np.searchsorted(period, unsure[:, 1], side="right"), -1)
+    step = np.where(within(period, by_inputs.disabled), 0, _count_table(contract)[before, after])
+    sets, to, by_input = np.zeros_like(active), np.zeros_like(step), np.zeros_like(active)
+    index = contract.index
+    if index is not None and index.action == "set":
+        sets = enters if index.edge else active
+        to = np.full_like(step, index.value) + (step if index.counts_last else 0)
+    for begin, end, one in by_inputs.sets:
+        here = within(period, ((begin, end),))
+        sets, by_input = sets | here, by_input | here
+        to = np.where(here, one.value + (step if one.counts_last else 0), to)
     return Events(
         period,
         before,
         after,
         _moved_table(contract)[before, after],
-        _count_table(contract)[before, after],
+        step,
         (before ^ after) == 0b11,
-        enters if contract.index is not None and contract.index.edge else active,
+        sets,
+        to,
+        by_input,
         enters,
         leaves,
         np.cumsum(edges)[:-1] > 0,
     )
 
 
+def _clashes(contract: Contract, lines: _Lines, by_inputs: Acts) -> list[Open]:
+    """Where the index and an input act at once, or the index is active as it is armed: what comes of that is open."""
+    index = contract.index
+    if index is None:
+        return []
+    found: list[Open] = []
+    spans = [(begin, end) for begin, end, _ in by_inputs.sets] + list(by_inputs.disabled)
+    if index.edge or index.action != "set":
+        spans += [(end, end + 1) for _, end in by_inputs.disarmed]
+    for begin, end in spans:
+        near = np.arange(begin - 1, end + 1)
+        if _index_active(contract, lines.a.level(near), lines.b.level(near), lines.index.level(near)).any():
+            found.append(Open(begin - 1, end, known=False))
+    return found
+
+
 def expect(contract: Contract, stimulus: Stimulus) -> Expectation:
     """What the contract allows for this stimulus."""
     sampled = {name: sample(line, stimulus.period_ps) for name, line in stimulus.lines.items()}
     lines = _filter_lines(contract, sampled)
-    opens = sorted(_opens(contract, lines))
-    events = make_events(contract, lines, opens)
+    by_inputs = acts(contract, lambda deed: _asserted(stimulus, deed))
+    opens = sorted([*_opens(contract, lines), *by_inputs.opens, *_clashes(contract, lines, by_inputs)])
+    events = make_events(contract, lines, opens, by_inputs)
     unordered = _unordered(contract, events)
     if unordered:
-        events = make_events(contract, lines, opens + unordered)
+        events = make_events(contract, lines, opens + unordered, by_inputs)
+    # Beside the count nothing is said of what a decoder does while it is disabled.
+    wide = sorted([*opens, *by_inputs.others])
     spans = _asserted(stimulus, "reset") if contract.reset else [(0, 0)] if stimulus.power_up else []
     names = ("a", "b", "index") if contract.index is not None else ("a", "b")
     activity = Activity(
@@ -273,27 +305,28 @@ def expect(contract: Contract, stimulus: Stimulus) -> Expectation:
     )
     ends = np.array([end for _, end in spans], dtype=np.int64)
     index_on = _index_active(contract, lines.a.level(ends), lines.b.level(ends), lines.index.level(ends))
-    released = releases(contract, stimulus, events, spans, activity, ends[index_on])
+    released = releases(contract, stimulus, events, spans, activity, ends[index_on], [span[:2] for span in by_inputs.sets])
     cutter = Cutter(contract, events, released, activity, stimulus.periods)
     latency = contract.latency
     rebases = [] if contract.illegal_holds else [Open(int(k), int(k), False) for k in events.period[events.illegal]]
-    step_epochs = cutter.cut(opens + rebases, latency.step.min, latency.step.max)
+    step_epochs = cutter.cut(wide + rebases, latency.step.min, latency.step.max)
     epochs = step_epochs
     if contract.count:
-        moving = [latency.count, latency.index] if contract.index else [latency.count]
+        moving = [latency.count, latency.index] if contract.index and contract.index.action == "set" else [latency.count]
         epochs = cutter.cut(opens + rebases + unordered, min(span.min for span in moving), max(span.max for span in moving))
     direction = sticky = None
     if contract.direction and not contract.direction.with_count:
-        direction = direction_levels(contract, events, cutter.cut(opens, latency.direction.min, latency.direction.max))
+        direction = direction_levels(contract, events, cutter.cut(wide, latency.direction.min, latency.direction.max))
     if contract.error and contract.error.sticky:
         clears = _asserted(stimulus, "clear")
-        sticky = sticky_levels(contract, events, opens, released, clears, stimulus.periods)
+        sticky = sticky_levels(contract, events, wide, released, clears, stimulus.periods)
     compared = sum(epoch.end - epoch.begin for epoch in epochs)
     return Expectation(
         events,
         epochs,
         step_epochs,
-        cutter.cut(opens, latency.error.min, latency.error.max),
+        cutter.cut(wide, latency.error.min, latency.error.max),
+        cutter.cut(wide, latency.index.min, latency.index.max) if contract.index else (),
         direction,
         sticky,
         stimulus.periods - compared,

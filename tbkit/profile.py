@@ -128,7 +128,7 @@ class Walk:
 
 @dataclass(frozen=True, slots=True)
 class Drive:
-    """An input of the decoder (``reset`` or ``clear``) is asserted for ``time``; with ``moving`` the shaft runs meanwhile."""
+    """Something is done to an input of the decoder for ``time``; with ``moving`` the shaft runs meanwhile."""
 
     signal: str
     time: Quantity
@@ -229,15 +229,18 @@ class Together:
 
 @dataclass(frozen=True, slots=True)
 class Press:
-    """The decoder's input ``signal`` (``reset`` or ``clear``) is asserted for ``time``, ``offset`` after each moment.
+    """Something is done to an input of the decoder for ``time``, ``offset`` after each moment.
 
-    Not before the motion begins; presses that overlap are one.
+    Not before the motion begins; presses that overlap are one. ``signal``: ``reset`` or a word of
+    :data:`~tbkit.contract.DEEDS`. With ``of_answer`` the offset is that to the clock in which the decoder answers to the moment:
+    with an offset of none both take effect in the same clock.
     """
 
     signal: str
     time: Quantity
     offset: Quantity
     where: Where
+    of_answer: bool = False
 
 
 @dataclass(frozen=True, slots=True)

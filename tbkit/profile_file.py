@@ -9,7 +9,7 @@ from fractions import Fraction
 from pathlib import Path
 
 from tbkit import encoder_file
-from tbkit.contract import A_LEADS_B
+from tbkit.contract import A_LEADS_B, DEEDS
 from tbkit.disturb_file import disturbances
 from tbkit.profile import (
     Action,
@@ -33,7 +33,9 @@ from tbkit.reading import MOST_TIMES, ONE, optional, pair, quantity, range_, tag
 from tbkit.units import Quantity, parse
 from tbkit.yamltree import Entry, Section, load, quoted
 
-NEEDS = ("count", "direction", "step", "error", "sticky-error", "clear-error", "index", "reset", "no-reset", "filter")
+NEEDS = (
+    "count", "direction", "step", "error", "sticky-error", "index", "reset", "no-reset", "filter", *DEEDS.values(),
+)  # fmt: skip
 
 
 def _rest(entry: Entry) -> Action:
@@ -204,8 +206,7 @@ _ACTIONS: dict[str, Callable[[Entry], Action]] = {
     "dither": _dither,
     "illegal": _illegal,
     "walk": _walk,
-    "reset": _drive("reset"),
-    "clear": _drive("clear"),
+    **{signal: _drive(signal) for signal in ("reset", *DEEDS)},
     "repeat": _repeat,
 }
 

@@ -12,10 +12,10 @@ from importlib import resources
 import jinja2
 
 from tbkit import __version__
-from tbkit.contract import BENCH, Contract, Port
+from tbkit.contract import BENCH, DEEDS, Contract, Output, Port, Slice
 from tbkit.encoder import LINES
 from tbkit.stimulus import SIGNALS, UNKNOWN
-from tbkit.trace import fields, record_words
+from tbkit.trace import record_words
 
 
 def _environment() -> jinja2.Environment:
@@ -53,15 +53,34 @@ def _inputs(contract: Contract) -> list[tuple[Port, str]]:
         "b": contract.b,
         "index": contract.index_line,
         "reset": contract.reset.port if contract.reset else None,
-        "clear": contract.clear_error,
     }
-    return [(port, f"{'~' if port.active_low else ''}line_{name}") for name, port in ports.items() if port is not None]
+    # An enable is driven by its opposite.
+    opposite = {"disable", "disarm"}
+    for signal, role in DEEDS.items():
+        one = contract.input(role)
+        ports[signal] = one.port if one else None
+    return [
+        (port, f"{'~' if port.active_low != (name in opposite) else ''}line_{name}")
+        for name, port in ports.items()
+        if port is not None
+    ]
+
+
+def _outputs(outputs: tuple[Output, ...]) -> tuple[dict[str, str], list[str]]:
+    """Ports that are one output as they stand, with its name; and ports of which outputs are bits."""
+    slices = [(one, output.name) for output in outputs for one in output.slices]
+    whole = {one.port: name for one, name in slices if one.high is None}
+    return whole, list(dict.fromkeys(one.port for one, _ in slices if one.high is not None))
+
+
+def _bits(one: Slice) -> str:
+    return f"decoder.{one.port}[{one.high}:{one.low}]" if one.high != one.low else f"decoder.{one.port}[{one.high}]"
 
 
 def _context(contract: Contract) -> dict[str, object]:
     inputs = _inputs(contract)
     vectors: dict[str, list[tuple[int, str]]] = {}
-    ports = [{"name": contract.clock.port, "value": "clock"}]
+    ports = [{"name": contract.clock.port, "value": "clock"}] if contract.clock.port else []
     for port, value in inputs:
         if port.bit is None:
             ports.append({"name": port.name, "value": value})
@@ -69,24 +88,31 @@ def _context(contract: Contract) -> dict[str, object]:
             vectors.setdefault(port.name, []).append((port.bit, value))
     ports += [{"name": name, "value": f"vector_{name}"} for name in vectors]
     ports += [{"name": constant.port, "value": sv_literal(constant.value, constant.width)} for constant in contract.constants]
-    names = {
-        "count": contract.count.port if contract.count else "",
-        "direction": contract.direction.port if contract.direction else "",
-        "step": contract.step.name if contract.step else "",
-        "error": contract.error.port.name if contract.error else "",
-    }
-    layout = fields(contract)
-    ports += [{"name": names[field.name], "value": f"out_{field.name}"} for field in layout]
+    outputs = contract.outputs
+    whole, shared = _outputs(outputs)
+    ports += [{"name": port, "value": f"out_{name}"} for port, name in whole.items()]
+    # Bits are taken from inside: how wide such a port is, the decoder file need not say.
+    ports += [{"name": port, "value": ""} for port in shared]
     record_bits = 32 * record_words(contract)
-    spare = record_bits - sum(field.width for field in layout)
-    record = [f"out_{field.name}" for field in reversed(layout)]
-    period = contract.clock.period_ps
+    spare = record_bits - sum(output.width for output in outputs)
+    record = [f"out_{output.name}" for output in reversed(outputs)]
+    clock = contract.clock
+    period = clock.edge_ps
+    if clock.tick:
+        ports.append({"name": clock.tick.name, "value": "~tick" if clock.tick.active_low else "tick"})
     return {
         "version": __version__,
         "bench": BENCH,
         "signals": [{"name": name, "bit": bit, "may_be_unknown": name in LINES} for bit, name in enumerate(SIGNALS)],
         "unknown_bit": UNKNOWN.bit_length() - 1,
-        "outputs": [{"name": field.name, "range": f"[{field.width - 1}:0] " if field.width > 1 else ""} for field in layout],
+        "outputs": [
+            {
+                "name": output.name,
+                "range": f"[{output.width - 1}:0] " if output.width > 1 else "",
+                "bits": "" if output.slices[0].port in whole else ", ".join(_bits(one) for one in output.slices),
+            }
+            for output in outputs
+        ],
         "record": [sv_literal(0, spare), *record] if spare else record,
         "record_bits": record_bits,
         "vectors": [
@@ -107,6 +133,8 @@ def _context(contract: Contract) -> dict[str, object]:
             "high": period // 2,
             "low": period - period // 2,
             "pause": 2 * period,
+            "runs": bool(clock.port),
+            "every": clock.every,
         },
     }
 

@@ -69,7 +69,7 @@ def print_results(console: Console, contract: Contract, results: Results, own_pr
         _print_kind(console, contract, results, kind, own_profiles)
     if len(kinds) > SHOWN:
         console.print(f"\n  also found: {', '.join(kinds[SHOWN:])}; --json FILE writes every finding")
-    _print_verdict(console, results, failed)
+    _print_verdict(console, contract, results, failed)
 
 
 def _row(profile: ProfileResult, width: int) -> Text:
@@ -116,7 +116,7 @@ def _times(many: int) -> str:
     return "once" if many == 1 else f"{many} times"
 
 
-def _print_verdict(console: Console, results: Results, failed: Sequence[ProfileResult]) -> None:
+def _print_verdict(console: Console, contract: Contract, results: Results, failed: Sequence[ProfileResult]) -> None:
     ran = [profile for profile in results.profiles if profile.verdict in ("pass", "fail", "empty")]
     edges, compared = sum(profile.edges for profile in ran), sum(profile.comparisons for profile in ran)
     console.print()
@@ -138,6 +138,8 @@ def _print_verdict(console: Console, results: Results, failed: Sequence[ProfileR
     if clocks:
         share = f"{100 * (1 - open_clocks / clocks):.1f} % of {clocks} clocks compared"
         console.print(f"{share}; the rest is reset, or left open by the contract", style="dim")
+    if contract.start.zeroed:
+        console.print("registers without an initial value started at 0, as the decoder file says (power_up: zero)", style="dim")
     if not results.simulator.four_state:
         console.print(
             f"{results.simulator.name} has two-state logic: an output that would be X for ever cannot be seen here", style="dim"

@@ -8,11 +8,11 @@ count is one finding.
 from __future__ import annotations
 
 from collections import Counter
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 
-from tbkit.contract import Contract, Span
+from tbkit.contract import Contract, Error, Span
 from tbkit.counting import counted, into_range
 from tbkit.expectation import Bools, Epoch, Events, Expectation, Hold, Int64s
 from tbkit.findings import Finding, Score
@@ -66,7 +66,8 @@ class _Book:
             event = max(int(np.searchsorted(events.period, clock, side="right")) - 1, 0)
         shown = [f"{events.before[max(event - 2, 0)]:02b}"]
         for n in range(max(event - 2, 0), min(event + 3, len(events))):
-            text = f"{events.after[n]:02b}" if events.after[n] != events.before[n] else "?" if events.open[n] else "index"
+            still = "?" if events.open[n] else "input" if events.by_input[n] else "index"
+            text = f"{events.after[n]:02b}" if events.after[n] != events.before[n] else still
             shown.append(f"[{text}]" if n == event and marked else text)
         return " ".join(shown)
 
@@ -78,7 +79,8 @@ class _Book:
 class _Due:
     """Changes that are due on one output within one epoch, one after another.
 
-    ``on_the_way``: the step alone may be seen before the index zeroes the count. ``optional``: may come after the epoch's end.
+    ``absolute``: the count is set, ``by_input`` or by the index. ``on_the_way``: the step alone may be seen before the index sets
+    the count. ``optional``: may come after the epoch's end.
     """
 
     earliest: Int64s
@@ -86,6 +88,7 @@ class _Due:
     value: Int64s
     step: Int64s
     absolute: Bools
+    by_input: Bools
     on_the_way: Bools
     optional: Bools
     event: Int64s
@@ -97,8 +100,11 @@ def judge(contract: Contract, stimulus: Stimulus, expectation: Expectation, rest
     moves = None
     if contract.count is not None and trace.count is not None:
         moves = _count(book, expectation, rests, trace.count)
-    if contract.step is not None and trace.step is not None:
-        steps = _pulses(book, "step", trace.step, expectation.step_epochs, expectation.events.step != 0, contract.latency.step)
+    events = expectation.events
+    by_step = {"step": events.step != 0, "up": events.step > 0, "down": events.step < 0}
+    for output in contract.step.outputs if contract.step else ():
+        series: Series = getattr(trace, output.name)
+        steps = _pulses(book, output.name, series, expectation.step_epochs, by_step[output.name], contract.latency.step)
         moves = steps if contract.count is None else moves
     if contract.direction is not None and trace.direction is not None:
         if expectation.direction is not None:
@@ -109,8 +115,13 @@ def judge(contract: Contract, stimulus: Stimulus, expectation: Expectation, rest
         if expectation.sticky_error is not None:
             _levels(book, "error", trace.error, expectation.sticky_error)
         else:
-            events = expectation.events
-            _pulses(book, "error", trace.error, expectation.error_epochs, events.illegal, contract.latency.error)
+            epochs = _before_full(expectation.error_epochs, trace.error, contract.error)
+            _pulses(book, "error", trace.error, epochs, events.illegal, contract.latency.error)
+    if contract.index is not None and trace.index is not None:
+        if contract.index.action == "pulse":
+            _pulses(book, "index", trace.index, expectation.index_epochs, events.enters_index, contract.latency.index)
+        elif trace.count is not None:
+            _captured(book, trace.index, trace.count, expectation)
     book.found.sort(key=lambda finding: finding.time_ps)
     return Score(book.comparisons, book.worst, expectation.open_periods, tuple(book.found), dict(book.totals))
 
@@ -149,18 +160,20 @@ def _due_counts(contract: Contract, events: Events, epoch: Epoch, base: int) -> 
     """The count changes that are due in an epoch."""
     assert contract.count is not None
     chosen = slice(epoch.first, epoch.last)
-    step, zero, leaves = events.step[chosen], events.zero[chosen], events.leaves_index[chosen]
-    value = counted(contract.count, step, zero, base)
+    step, sets, leaves = events.step[chosen], events.sets[chosen], events.leaves_index[chosen]
+    value = counted(contract.count, step, sets, events.to[chosen], base)
     before = np.concatenate([[base], value[:-1]]).astype(np.int64) if len(value) else value
     by_count, by_index = contract.latency.count, contract.latency.index
     period = events.period[chosen]
-    # A count that the index holds at 0 is let go when the index is seen to have ended, but before the next step.
-    slowly = leaves & (contract.index is not None and not contract.index.edge)
+    # A count that the index holds is let go when the index is seen to have ended, but before the next step.
+    index = contract.index
+    slowly = leaves & (index is not None and index.action == "set" and not index.edge)
     let_go = np.minimum(max(by_count.max, by_index.max), np.append(np.diff(period), by_index.max + 1) + by_count.min - 1)
-    earliest = period + np.where(zero, by_index.min, by_count.min)
-    latest = period + np.where(zero, by_index.max, np.where(slowly, np.maximum(let_go, by_count.max), by_count.max))
-    # Counted first, zeroed a little later: the step alone may be seen on the way.
-    on_the_way = events.enters_index[chosen] & zero & (step != 0) & _apart(contract)
+    by_input = events.by_input[chosen]
+    earliest = period + np.where(sets & ~by_input, by_index.min, by_count.min)
+    latest = period + np.where(sets & ~by_input, by_index.max, np.where(slowly, np.maximum(let_go, by_count.max), by_count.max))
+    # Counted first, set a little later: the step alone may be seen on the way.
+    on_the_way = events.enters_index[chosen] & sets & ~by_input & (step != 0) & _apart(contract)
     earliest = np.where(on_the_way, period + min(by_count.min, by_index.min), earliest)
     keep = np.flatnonzero((value != before) | on_the_way)
     return _Due(
@@ -168,7 +181,8 @@ def _due_counts(contract: Contract, events: Events, epoch: Epoch, base: int) -> 
         latest[keep],
         value[keep],
         step[keep],
-        zero[keep],
+        sets[keep],
+        by_input[keep],
         on_the_way[keep],
         latest[keep] > epoch.end,
         epoch.first + keep,
@@ -203,7 +217,7 @@ def _count(book: _Book, expectation: Expectation, rests: Rests, series: Series) 
             event = due.event[: len(when)]
             if len(when):
                 book.saw_latency(int((when - expectation.events.period[event]).max()))
-            by_step = ~due.absolute[: len(when)] | (not _apart(contract))
+            by_step = ~due.absolute[: len(when)] | (~due.by_input[: len(when)] & (not _apart(contract)))
             periods.append(when[by_step])
             matched.append(event[by_step])
             shown = len(when)
@@ -246,7 +260,8 @@ def _base(book: _Book, epoch: Epoch, seen: int, carried: int | None) -> int:
 def _carried(contract: Contract, events: Events, done: int, first: int, base: int) -> int | None:
     """The count after a gap in which only pulses that come and go were in doubt; None if it cannot be told."""
     assert contract.count is not None
-    path = counted(contract.count, events.step[done:first], events.zero[done:first], base)
+    some = slice(done, first)
+    path = counted(contract.count, events.step[some], events.sets[some], events.to[some], base)
     if contract.count.overflow == "hold":
         low, high = (min(base, int(path.min())), max(base, int(path.max()))) if len(path) else (base, base)
         if low <= contract.count.lowest or high >= contract.count.highest:
@@ -298,6 +313,7 @@ def _walk(book: _Book, due: _Due, when: list[int], value: list[int], seen: int) 
     lost: list[tuple[str, int, int, int, int]] = []
     earliest, latest, steps = due.earliest.tolist(), due.latest.tolist(), due.step.tolist()
     absolute, optional, events = due.absolute.tolist(), due.optional.tolist(), due.event.tolist()
+    values, by_input = due.value.tolist(), due.by_input.tolist()
     apart = _apart(contract)
     periods = book.events.period
     e = c = 0
@@ -306,7 +322,7 @@ def _walk(book: _Book, due: _Due, when: list[int], value: list[int], seen: int) 
         target = wayside = now
         if e < len(events):
             wayside = _into_range(contract, now + steps[e])
-            target = 0 if absolute[e] else wayside
+            target = values[e] if absolute[e] else wayside
         passing = False
         if e < len(events) and c < len(when) and due.on_the_way[e] and steps[e] and wayside != target:
             passing = earliest[e] <= when[c] <= latest[e] and value[c] == wayside
@@ -332,7 +348,8 @@ def _walk(book: _Book, due: _Due, when: list[int], value: list[int], seen: int) 
                 now = value[c]
                 c += 1
             else:
-                kind = "index-missed" if absolute[e] else "count-lost" if abs(target - now) == 1 else ""
+                set_by = "input-wrong" if by_input[e] else "index-missed" if absolute[e] else ""
+                kind = set_by or ("count-lost" if abs(target - now) == 1 else "")
                 lost.append((kind, latest[e], events[e], target, now))
             e += 1
         elif e == len(events) or when[c] < earliest[e]:
@@ -345,14 +362,15 @@ def _walk(book: _Book, due: _Due, when: list[int], value: list[int], seen: int) 
             now = value[c]
             c += 1
         elif value[c] == target:
-            if not (absolute[e] and apart):
+            if not (by_input[e] or (absolute[e] and apart)):
                 right.append((when[c], events[e]))
             book.saw_latency(int(when[c] - periods[events[e]]))
             now = value[c]
             e, c = e + 1, c + 1
         else:
             missed = absolute[e] and value[c] == wayside
-            kind = "index-missed" if missed else _extra_kind(book, now, target, value[c], when[c])
+            set_by = "input-wrong" if by_input[e] else "index-missed" if missed else ""
+            kind = set_by or _extra_kind(book, now, target, value[c], when[c])
             book.note(kind, "count", when[c], events[e], target, value[c])
             now = value[c]
             e, c = e + 1, c + 1
@@ -371,7 +389,8 @@ def _extra_kind(book: _Book, now: int, target: int, found: int, clock: int) -> s
     off = (found - target) % count.size
     off = min(off, count.size - off)
     far = min((found - now) % count.size, (now - found) % count.size) > 2
-    if found == 0 and contract.index is not None and (far or _index_near(book, clock)):
+    sets = contract.index is not None and contract.index.action == "set"
+    if contract.index is not None and sets and found == contract.index.value and (far or _index_near(book, clock)):
         return "index-false"
     wraps = abs(target - now) > 1 or (count.overflow == "hold" and now in (count.lowest, count.highest))
     if wraps or (off >= 4 and off & (off - 1) == 0) or (abs(found - now) > 2 and found in (count.lowest, count.highest)):
@@ -497,9 +516,9 @@ def _pulses(
         due = epoch.first + np.flatnonzero(wanted[epoch.first : epoch.last])
         begin = epoch.begin if epoch.base == "start" else epoch.begin + 1
         seen = ups[np.searchsorted(ups, begin) : np.searchsorted(ups, epoch.end, side="right")]
-        if output == "step":
-            # While the index holds the count at 0, a decoder may give a step for a motion or not.
-            free = _spread(events.zero[due], events.period[due], latency)
+        if output in ("step", "up", "down"):
+            # While the index holds the count, a decoder may give a step for a motion or not.
+            free = _spread(events.sets[due], events.period[due], latency)
             may, wants = (_in_window(seen, events.period[chosen], latency) for chosen in (due[free], due[~free]))
             seen = seen[wants | ~may]
             due = due[~free]
@@ -518,9 +537,50 @@ def _pulses(
         right = _walk_pulses(book, output, at, due.tolist(), seen.tolist(), latency, must)
         right_period.append(np.array([clock for clock, _ in right], dtype=np.int64))
         right_event.append(np.array([event for _, event in right], dtype=np.int64))
-    if due_total and not seen_total and output == "step":
+    if due_total and not seen_total and output != "error":
         _silent(book, output, events, epochs)
     return np.concatenate(right_period), np.concatenate(right_event)
+
+
+def _before_full(epochs: tuple[Epoch, ...], series: Series, error: Error) -> tuple[Epoch, ...]:
+    """The epochs up to where an error counter that stops at its end has come there: from then on it tells nothing."""
+    if error.kind != "counter" or not error.holds:
+        return epochs
+    ups, most = np.flatnonzero(series.value == 1), (1 << error.output.width) - 1
+    if len(ups) < most:
+        return epochs
+    full = int(series.period[ups[most - 1]])
+    return tuple(replace(epoch, end=min(epoch.end, full)) for epoch in epochs if epoch.begin < full)
+
+
+def _captured(book: _Book, series: Series, count: Series, expectation: Expectation) -> None:
+    """An output that takes the count as the index becomes active, and keeps it until the next time.
+
+    Which side of a step in the same clock it takes is its own business.
+    """
+    by_index, by_count = book.contract.latency.index, book.contract.latency.count
+    events = expectation.events
+    for epoch in expectation.index_epochs:
+        due = epoch.first + np.flatnonzero(events.enters_index[epoch.first : epoch.last])
+        at = events.period[due]
+        changes = _changes_within(series, epoch.begin, epoch.end)
+        when = series.period[changes]
+        book.comparisons += len(due) + len(when)
+        for clock in when[~_in_window(when, at, by_index)].tolist():
+            seen = int(series.value[series.at(clock)])
+            book.note("index-false", "index", clock, -1, int(series.value[series.at(clock - 1)]), seen)
+        for event, cause in zip(due.tolist(), at.tolist(), strict=True):
+            clock = cause + by_index.max
+            if clock > epoch.end:
+                break
+            entry = int(series.at(clock))
+            first, last = int(count.at(cause + by_count.min - 1)), int(count.at(cause + by_count.max))
+            right = set(count.value[first : last + 1].tolist())
+            if series.unknown[entry]:
+                book.note("unknown-level", "index", clock, event, "0 or 1 in every bit", "X or Z")
+                return
+            if int(series.value[entry]) not in right:
+                book.note("capture-wrong", "index", clock, event, int(count.value[last]), int(series.value[entry]))
 
 
 def _spread(free: Bools, causes: Int64s, latency: Span) -> Bools:
@@ -549,7 +609,8 @@ def _walk_pulses(
                 if by:
                     book.note_time("late" if by > 0 else "early", output, clock, event, clock - by)
             return [(clock, event) for clock, by, event in zip(seen, off.tolist(), due, strict=True) if not by]
-    missed, false = ("error-missed", "error-false") if output == "error" else ("step-wrong", "step-wrong")
+    by_name = {"error": ("error-missed", "error-false"), "index": ("index-missed", "index-false")}
+    missed, false = by_name.get(output, ("step-wrong", "step-wrong"))
     right: list[tuple[int, int]] = []
     earliest, latest = (at + latency.min).tolist(), (at + latency.max).tolist()
     e = c = 0

@@ -13,7 +13,7 @@ from math import ceil, floor
 import numpy as np
 import numpy.typing as npt
 
-from tbkit.contract import A_LEADS_B, Contract, Count
+from tbkit.contract import A_LEADS_B, DEEDS, Contract, Count
 from tbkit.motion import Int64s
 from tbkit.ordered import merged
 from tbkit.stimulus import Stimulus
@@ -40,7 +40,7 @@ def _gated(contract: Contract, stimulus: Stimulus, place: Int64s) -> Int64s:
     """1 where the index zeroes the count at that position, 0 where it does not, -1 where it depends on the instant."""
     windows, index = stimulus.ideal.windows, contract.index
     inside = np.zeros(len(place), dtype=bool)
-    if not windows or index is None:
+    if not windows or index is None or index.action != "set":
         return inside.astype(np.int64)
     # Edges that are not where A and B have theirs, or are not seen together, may come up to a state earlier or later.
     whole = stimulus.ideal.exact_index and not stimulus.aperture_ps
@@ -159,34 +159,61 @@ def _origins(
     contract: Contract, stimulus: Stimulus, place: Int64s, since_ps: Int64s, counted: Int64s, gated: Int64s, quiet_ps: int
 ) -> list[_Origin]:
     origins: list[_Origin] = []
-    releases = _resets(stimulus) if contract.reset else [(0, 0)] if stimulus.power_up else []
+    releases = _spans(stimulus, "reset") if contract.reset else [(0, 0)] if stimulus.power_up else []
     origins += [_Origin(begin, None, 0) for begin, _ in releases]
+    busy = [span for deed in DEEDS if deed != "clear" for span in _spans(stimulus, deed)]
     moves = np.concatenate([stimulus.lines["a"].toggles_ps, stimulus.lines["b"].toggles_ps])
     for begin, time in releases:
         near = bool(((moves > time - quiet_ps) & (moves < time + quiet_ps)).any())
         near |= contract.reset is not None and time - begin < contract.reset.clocks * stimulus.period_ps
+        near |= any(first < time + quiet_ps and last > begin - quiet_ps for first, last in busy)
         at = int(np.searchsorted(since_ps, time, side="right")) - 1
         # The state is read from the shaft; if the lines lie, the run is lost anyway.
         state = A_LEADS_B[int(place[at]) % 4]
         truthful = bool(_truthful(stimulus, place[at : at + 1], np.array([time]))[0])
         known = not near and truthful and state in contract.start.rest_states
         value = contract.start.count if known else None
-        if gated[at] and contract.start.count != 0:
-            # The index is on when the reset ends: sensed as a level it zeroes the count, as an edge it may.
-            sure = known and gated[at] == 1 and contract.index is not None and not contract.index.edge
-            value = 0 if sure else None
+        if gated[at] and contract.index is not None and contract.start.count != contract.index.value:
+            # The index is on when the reset ends: sensed as a level it sets the count, as an edge it may.
+            sure = known and gated[at] == 1 and not contract.index.edge
+            value = contract.index.value if sure else None
         origins.append(_Origin(time, value, int(counted[at])))
+    origins += _by_inputs(contract, stimulus, since_ps, counted, quiet_ps)
     if contract.index is not None and contract.index.edge:
         gated = np.where((gated == 1) & (np.concatenate([[0], gated[:-1]]) == 1), 0, gated)
     for at in np.flatnonzero(gated).tolist():
-        # Soon after a reset the decoder need not be awake.
-        asleep = any(time <= since_ps[at] < time + quiet_ps for _, time in releases)
-        origins.append(_Origin(int(since_ps[at]), 0 if gated[at] == 1 and not asleep else None, int(counted[at])))
+        # Soon after a reset the decoder need not be awake; while an input acts, what the index does is the line oracle's affair.
+        asleep = any(begin <= since_ps[at] < time + quiet_ps for begin, time in (*releases, *busy))
+        assert contract.index is not None
+        value = contract.index.value if gated[at] == 1 and not asleep else None
+        # The step into the index counts on from the value, or is lost to it; a jump is no step.
+        stepped = at > 0 and abs(int(place[at] - place[at - 1])) == 1
+        ideal = counted[at - 1] if contract.index.counts_last and stepped else counted[at]
+        origins.append(_Origin(int(since_ps[at]), value, int(ideal)))
     return origins
 
 
-def _resets(stimulus: Stimulus) -> list[tuple[int, int]]:
-    """When reset is asserted and released, each time."""
-    line = stimulus.drives["reset"]
+def _by_inputs(contract: Contract, stimulus: Stimulus, since_ps: Int64s, counted: Int64s, quiet_ps: int) -> list[_Origin]:
+    """What inputs make of the count: set at rest it is known again, and what moves while it is disabled is not counted."""
+    moves = np.concatenate([stimulus.lines["a"].toggles_ps, stimulus.lines["b"].toggles_ps])
+    found: list[_Origin] = []
+    for deed, role in DEEDS.items():
+        one = contract.input(role)
+        if one is None or role in ("clear-error", "arm"):
+            continue
+        for begin, end in _spans(stimulus, deed):
+            near = bool(((moves > begin - quiet_ps) & (moves < end + quiet_ps)).any())
+            near |= any(first < end + quiet_ps and last > begin - quiet_ps for first, last in _spans(stimulus, "reset"))
+            at = int(np.searchsorted(since_ps, end, side="right")) - 1
+            if role != "enable" or near:
+                found.append(_Origin(begin, None, 0))
+            if role != "enable" and not near:
+                found.append(_Origin(end, one.value, int(counted[at])))
+    return found
+
+
+def _spans(stimulus: Stimulus, signal: str) -> list[tuple[int, int]]:
+    """When an input is acted on, from and to, each time."""
+    line = stimulus.drives[signal]
     toggles = [0, *line.toggles_ps.tolist()] if line.first else line.toggles_ps.tolist()
     return list(zip(toggles[::2], toggles[1::2], strict=False))

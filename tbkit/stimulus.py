@@ -11,7 +11,7 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
-from tbkit.contract import Contract
+from tbkit.contract import DEEDS, Contract
 from tbkit.course import build_motion
 from tbkit.disturb import Disturbed, Scene, disturb
 from tbkit.encoder import LINES, Edges, Line, encode, index_windows
@@ -22,7 +22,7 @@ from tbkit.profile import Profile
 from tbkit.units import Scale
 
 #: Bits of a word's levels, in this order; the bench template uses the same.
-SIGNALS = (*LINES, "reset", "clear")
+SIGNALS = (*LINES, "reset", *DEEDS)
 #: The level bit that makes A, B and index X.
 UNKNOWN = 1 << 15
 CLEARANCE_PS = 2
@@ -51,7 +51,7 @@ class Stimulus:
         name, seed: what to repeat it by.
         period_ps: clock period P.
         lines: A, B and index.
-        drives: the decoder's inputs ``reset`` and ``clear``.
+        drives: ``reset`` and the other inputs acted on, by the names of :data:`SIGNALS`.
         ideal: the encoder's own edges, before disturbances.
         begin_ps: when the motion begins.
         lost_ps: from when the lines no longer tell where the shaft is, or None.
@@ -115,10 +115,13 @@ def generator(seed: int, name: str, stream: str) -> np.random.Generator:
     return np.random.Generator(np.random.PCG64([seed, zlib.crc32(name.encode()), zlib.crc32(stream.encode())]))
 
 
-def _clear_of_clock(line: Line, period_ps: int) -> Line:
-    """Keep :data:`CLEARANCE_PS` from active edges, within the same clock period; toggles that meet cancel out."""
+def _clear_of_clock(line: Line, period_ps: int, away_ps: int) -> Line:
+    """Keep ``away_ps`` from active edges, within the same clock period; toggles that meet cancel out.
+
+    Where there is no clock, that brings all toggles to the middle of a period: what comes and goes within it must not be seen.
+    """
     phase = line.toggles_ps % period_ps
-    moved = line.toggles_ps - phase + np.clip(phase, CLEARANCE_PS, period_ps - CLEARANCE_PS)
+    moved = line.toggles_ps - phase + np.clip(phase, away_ps, period_ps - away_ps)
     return Line(line.first, moved[run_starts(moved)][run_lengths(moved) % 2 == 1])
 
 
@@ -209,6 +212,9 @@ def compile_stimulus(profile: Profile, contract: Contract, seed: int, most_perio
     begin_ps = (reset_clocks + 1 + settle) * period_ps + 3 * period_ps // 8
     scenario = lay_out(profile, scale, seed, begin_ps, most_periods)
     disturbed, edges = scenario.disturbed, scenario.edges
+    if disturbed.apertures_ps and not contract.clock.port:
+        msg = "an aperture is for decoders with a clock"
+        raise UnfitError(msg)
     if disturbed.unknown and contract.reset is None:
         msg = "its lines are X until reset, and this decoder has no reset"
         raise UnfitError(msg)
@@ -219,8 +225,10 @@ def compile_stimulus(profile: Profile, contract: Contract, seed: int, most_perio
             line: _through_aperture(one, width_ps, period_ps, generator(seed, profile.name, f"{name} {line}"))
             for line, one in lines.items()
         }
-    lines = {name: _clear_of_clock(line, period_ps) for name, line in lines.items()}
-    drives = {name: _clear_of_clock(line, period_ps) for name, line in drives.items()}
+    away_ps = CLEARANCE_PS if contract.clock.port else period_ps // 2
+    edge_ps = contract.clock.edge_ps
+    lines = {name: _clear_of_clock(line, edge_ps, away_ps) for name, line in lines.items()}
+    drives = {name: _clear_of_clock(line, edge_ps, away_ps) for name, line in drives.items()}
     moving = [line.toggles_ps for line in (*lines.values(), *drives.values())]
     # Twice the time to come to rest: the first half ends all activity, the second shows that it has ended.
     quiet_ps = 2 * (settle + 8) * period_ps if not contract.timers else np.iinfo(np.int64).max
@@ -257,17 +265,17 @@ def compile_stimulus(profile: Profile, contract: Contract, seed: int, most_perio
 
 
 def _drives(contract: Contract, scenario: Scenario, reset_clocks: int) -> dict[str, Line]:
-    """The inputs reset and clear: power-on reset, and what motion and disturbances do with them.
+    """The inputs acted on: power-on reset, and what motion and disturbances do with them.
 
     Raises:
         UnfitError: the decoder does not have that input.
     """
     period_ps = contract.clock.period_ps
-    ports = {"reset": contract.reset, "clear": contract.clear_error}
+    ports = {"reset": contract.reset, **{signal: contract.input(role) for signal, role in DEEDS.items()}}
     spans: dict[str, list[tuple[int, int]]] = {name: [] for name in ports}
     for signal, from_ps, to_ps in sorted((*scenario.motion.drives, *scenario.disturbed.presses)):
         if ports[signal] is None:
-            msg = f"it drives the {signal} input, which this decoder does not have"
+            msg = f"it drives the {DEEDS.get(signal, signal)} input, which this decoder does not have"
             raise UnfitError(msg)
         known = spans[signal]
         if known and from_ps <= known[-1][1]:
@@ -310,7 +318,7 @@ def _check_needs(profile: Profile, contract: Contract) -> None:
         "step": ("a step", contract.step is not None),
         "error": ("an error", contract.error is not None),
         "sticky-error": ("a sticky error", contract.error is not None and contract.error.sticky),
-        "clear-error": ("a clear-error input", contract.clear_error is not None),
+        **{role: (f"{'an' if role[0] in 'ae' else 'a'} {role} input", contract.input(role) is not None) for role in DEEDS.values()},
         "index": ("an index action", contract.index is not None),
         "reset": ("a reset", contract.reset is not None),
         "no-reset": ("no reset", contract.reset is None),

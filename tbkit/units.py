@@ -164,6 +164,9 @@ class Scale:
             "reject": filtering.rejects,
             "pass": filtering.passes,
             "settle": contract.settle_clocks,
+            # By how much later than a line an input must change to take effect with it; no units that can be written.
+            "answer": contract.main_latency.min - contract.latency.inputs.min,
+            "answer of clear": contract.latency.error.min - contract.latency.clear.min,
         }
         if count is not None:
             states["overflow"] = Fraction((count.highest - contract.start.count + 1) * count.states_per_count)

@@ -141,7 +141,7 @@ FAULTS = {
     "error-stuck": _fault({"error-stuck"}, _pulse),
     "error-long": _fault({"error-stuck"}, _pulse),
     "not-sticky": _fault({"error-missed"}, _sticky),
-    "clear-ignored": _fault({"error-stuck"}, lambda c, _: c.clear_error is not None),
+    "clear-ignored": _fault({"error-stuck"}, lambda c, _: c.input("clear-error") is not None),
     "index-never": _fault({"index-missed"}, _index),
     "index-ungated": _fault({"index-false", "index-missed", "count-lost"}, _gate),
     "index-without-line": _fault({"index-false"}, _gate),

@@ -484,7 +484,7 @@ def run(contract: Contract, stimulus: Stimulus, build: Build, fault: str = "") -
         out_count.series(periods, unknown_from) if contract.count else None,
         out_direction.series(periods) if contract.direction else None,
         out_step.series(periods) if contract.step else None,
-        out_error.series(periods) if contract.error else None,
+        error=out_error.series(periods) if contract.error else None,
     )
 
 

@@ -33,6 +33,7 @@ COUNT_KEYS = "port, width, signed, resolution, at, forward, overflow, modulo, lo
 NAME = "expected an HDL name: a letter or _, then letters, digits, _ or $"
 KEYWORD = "which is a SystemVerilog keyword; expected an HDL name"
 CLOCKS = "a whole number from 0 to 1000000"
+ROLES = "constant, clear-error, clear-count, preload, enable or arm"
 UNSUPPORTED = "is not supported by this version of tbkit"
 
 
@@ -178,9 +179,22 @@ CASES = [
         "3: clock.rate: found '1e999999 Hz', expected a number of at most 40 digits with an exponent of at most 30",
         clock="{port: clk, rate: 1e999999 Hz}",
     ),
-    case("clock-none", f"3: clock: a decoder without a clock {UNSUPPORTED}", clock="none"),
-    case("clock-empty", "3: clock: found nothing, expected a map with the keys port, rate, edge", clock=""),
-    case("clock-list", "3: clock: found a list, expected a map with the keys port, rate, edge", clock="[clk, 50 MHz]"),
+    case(
+        "tick-of-one",
+        "3: clock.tick.every: found '1', expected a whole number from 2 to 1000000\n"
+        "3: clock.tick: the key 'port' is missing; write for example `port: tick`",
+        clock="{port: clk, rate: 50 MHz, tick: {every: 1}}",
+    ),
+    case(
+        "tick-and-short-reset",
+        "4: reset: with a tick, write how many ticks the reset lasts, 2 at least",
+        clock="{port: clk, rate: 50 MHz, tick: {port: ce, every: 4}}",
+        reset="{port: rst, active: high, kind: sync, clocks: 1}",
+    ),
+    case("clock-empty", "3: clock: found nothing, expected none or a map with the keys port, rate, edge, tick", clock=""),
+    case(
+        "clock-list", "3: clock: found a list, expected none or a map with the keys port, rate, edge, tick", clock="[clk, 50 MHz]"
+    ),
     case(
         "clock-edge",
         "3: clock.edge: found 'Risng', expected rising or falling (did you mean 'rising'?)",
@@ -229,17 +243,46 @@ CASES = [
     ),
     case(
         "clear-twice-and-with-value",
-        "8: inputs.clr.value: a clear-error input has no constant value; the tool drives it\n"
+        "8: inputs.clr.value: this has no meaning for an input with the role clear-error: `value` belongs to preload inputs\n"
         "8: inputs.more: a second clear-error input; one is supported",
         inputs="{clr: {role: clear-error, value: 0}, more: {role: clear-error}}",
         error="{port: err, kind: sticky}",
     ),
     case(
         "later-role",
-        f"8: inputs.en.role: 'enable' {UNSUPPORTED}; supported: constant or clear-error",
-        inputs="{en: {role: enable}}",
+        f"8: inputs.en.role: 'latch' {UNSUPPORTED}; supported: {ROLES}",
+        inputs="{en: {role: latch}}",
     ),
-    case("unknown-role", "8: inputs.en.role: found 'on', expected constant or clear-error", inputs="{en: {role: on}}"),
+    case("unknown-role", f"8: inputs.en.role: found 'on', expected {ROLES}", inputs="{en: {role: on}}"),
+    case(
+        "role-keys",
+        "8: inputs.en.sense: this has no meaning for an input with the role enable: `sense` belongs to clear-count and preload"
+        " inputs\n"
+        "8: inputs.en.width: this has no meaning for an input with the role enable: the tool drives it\n"
+        "8: inputs.zero.resumes: this has no meaning for an input with the role clear-count: `resumes` belongs to enable inputs\n"
+        "8: inputs.zero.step_together: `step_together` needs `sense: edge`; while the level lasts the count does not move",
+        inputs="{en: {role: enable, sense: edge, width: 2}, zero: {role: clear-count, step_together: counted, resumes: anyhow}}",
+    ),
+    case(
+        "preload-outside",
+        "8: inputs: the value 300 of the preload input is outside the count's range -128 to 127",
+        inputs="{ld: {role: preload, value: 300}}",
+        count="{port: p, width: 8, signed: true}",
+    ),
+    case(
+        "preload-without-value",
+        "8: inputs.ld: the key 'value' is missing; write for example `value: 1000`",
+        inputs="{ld: {role: preload}}",
+    ),
+    case(
+        "zero-without-count",
+        "6: latency.count: the decoder file has no `count`, so nothing has this latency; add that, or take this away\n"
+        "8: inputs: a clear-count input needs a `count` output",
+        count=None,
+        step="{port: step, kind: pulse}",
+        inputs="{clr: {role: clear-count}}",
+    ),
+    case("arm-without-index", "8: inputs: an arm input needs an `index` action", inputs="{arm: {role: arm}}"),
     case(
         "wide-constant",
         "8: inputs.mode: found '5', expected a whole number from 0 to 1; a wider input is written {value: 5, width: 3}",
@@ -350,21 +393,102 @@ CASES = [
     case(
         "direction-values",
         "8: direction.forward: found '2', expected 0 or 1\n"
-        f"8: direction.valid: 'with-step' {UNSUPPORTED}; supported: always or with-count",
-        direction="{port: dir, forward: 2, valid: with-step}",
+        "8: direction.valid: found 'with-steps', expected always, with-count or with-step (did you mean 'with-step'?)",
+        direction="{port: dir, forward: 2, valid: with-steps}",
     ),
-    case("step-toggle", f"8: step.kind: 'toggle' {UNSUPPORTED}; supported: pulse", step="{port: step, kind: toggle}"),
     case(
-        "error-counter", f"8: error.kind: 'counter' {UNSUPPORTED}; supported: pulse or sticky", error="{port: err, kind: counter}"
+        "direction-of-several-bits",
+        "8: direction.port: found 'status[3:2]', which is more than one bit; expected a port or one bit of it",
+        direction='{port: "status[3:2]", forward: 1, valid: always}',
+    ),
+    case(
+        "step-kind",
+        "8: step.kind: found 'edge', expected pulse, toggle or level",
+        step="{port: step, kind: edge}",
+    ),
+    case(
+        "step-both-ways",
+        "8: step.port: `port` is for steps both ways on one output; `up` and `down` are for one output each way\n"
+        "8: step: the key 'down' is missing; write for example `down: count_down`",
+        step="{port: step, up: u, kind: pulse}",
+    ),
+    case("error-counter", "8: error: the key 'width' is missing; write for example `width: 8`", error="{port: err, kind: counter}"),
+    case(
+        "error-keys",
+        "8: error.overflow: `overflow` belongs to `kind: counter`; this one is pulse\n"
+        "8: error.width: `width` belongs to `kind: counter`; this one is pulse\n"
+        "8: error.wins: `wins` belongs to `kind: sticky`; this one is pulse",
+        error="{port: err, kind: pulse, wins: set, width: 4, overflow: hold}",
+    ),
+    case(
+        "counter-active",
+        "8: error.active: `active` belongs to an output of one bit; a counter is a number",
+        error="{port: err, kind: counter, width: 4, active: low}",
+    ),
+    case(
+        "slice-backwards",
+        "6: count.port: found 'word[3:10]', with the lower bit first; write 'word[10:3]'",
+        count='{port: "word[3:10]", width: 8, signed: false}',
+    ),
+    case(
+        "slice-width", "6: count.port: these are 7 bits, and the width is 8", count='{port: "word[10:4]", width: 8, signed: false}'
+    ),
+    case(
+        "slices-without-bits",
+        '6: count.port: of several ports each needs its bits, as in ["pos_high[7:0]", "pos_low[7:0]"]',
+        count='{port: [high, "low[7:0]"], width: 16, signed: false}',
+    ),
+    case(
+        "slice-text",
+        '6: count.port: found \'p[7:]\', expected a port such as pos, or bits of one such as "status[3]" or "status[23:8]"',
+        count='{port: "p[7:]", width: 8, signed: false}',
+    ),
+    case(
+        "slices-overlap",
+        "8: direction: the port 'word[15]' is used twice; `count` uses it already",
+        count='{port: "word[15:0]", width: 16, signed: false}',
+        direction='{port: "word[15]", forward: 1, valid: always}',
     ),
     # A misspelt kind must not also be taken for another kind than the clear-error input needs.
     case(
         "error-kind",
-        "9: error.kind: found 'stiky', expected pulse or sticky (did you mean 'sticky'?)",
+        "9: error.kind: found 'stiky', expected pulse, sticky or counter (did you mean 'sticky'?)",
         inputs="{clr: {role: clear-error}}",
         error="{port: err, kind: stiky}",
     ),
-    case("index-latch", f"8: index.action: 'latch' {UNSUPPORTED}; supported: zero", index="{action: latch}"),
+    case(
+        "index-latch",
+        "8: index: the key 'port' is missing; write for example `port: captured`",
+        index="{action: latch}",
+        lines="{a: enc_a, b: enc_b, index: z}",
+    ),
+    case(
+        "index-load",
+        "8: index: the key 'value' is missing; write for example `value: 100`",
+        index="{action: load}",
+        lines="{a: enc_a, b: enc_b, index: z}",
+    ),
+    case(
+        "index-load-outside",
+        "8: index: the value 300 is outside the count's range 0 to 255",
+        count="{port: p, width: 8, signed: false}",
+        lines="{a: enc_a, b: enc_b, index: z}",
+        index="{action: load, value: 300}",
+    ),
+    case(
+        "index-keys",
+        "8: index.sense: this belongs to the actions zero and load; latch and pulse act once, as the index becomes active\n"
+        "8: index.step_together: this belongs to the actions zero and load; latch and pulse act once, as the index becomes active\n"
+        "8: index.value: `value` belongs to the action load; this one is pulse",
+        lines="{a: enc_a, b: enc_b, index: z}",
+        index="{action: pulse, port: home, value: 3, sense: edge, step_together: lost}",
+    ),
+    case(
+        "index-step-together",
+        "8: index.step_together: `step_together` needs `sense: edge`; while the level lasts the count does not move",
+        lines="{a: enc_a, b: enc_b, index: z}",
+        index="{action: zero, step_together: counted}",
+    ),
     case(
         "index-without-line",
         "8: index: an index action needs the index line; add it as `lines: {index: enc_z}`",
@@ -374,7 +498,7 @@ CASES = [
     case(
         "index-without-count",
         "6: latency.count: the decoder file has no `count`, so nothing has this latency; add that, or take this away\n"
-        "8: index: the index action `zero` needs a `count` output",
+        "8: index: an index action other than `pulse` needs a `count` output",
         count=None,
         step="{port: step, kind: pulse}",
         index="{action: zero}",
@@ -485,7 +609,7 @@ CASES = [
         "3: clock.rate: found '5', expected a number and a unit for a rate: Hz, kHz, MHz, GHz\n"
         "4: lines: the port 'x' is used twice\n"
         f"5: cuont: unknown key; allowed here: {TOP_KEYS} (did you mean 'count'?)\n"
-        "6: latency: found a list, expected a map with the keys count, direction, step, error, index, clear",
+        "6: latency: found a list, expected a map with the keys count, direction, step, error, index, clear, inputs",
         id="many",
     ),
 ]

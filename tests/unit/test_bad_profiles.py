@@ -10,8 +10,13 @@ import pytest
 from tbkit.profile_file import read_profile
 
 TOP_KEYS = "profile, about, needs, power_up, seed, encoder, motion, disturb"
-ACTIONS = "rest, move, return, sine, table, clicks, home, reverse, dither, illegal, walk, reset, clear, repeat"
-DISTURBANCES = "glitch, bounce, missing, stuck, swap, invert, together, reset, clear, aperture, unknown"
+ACTIONS = (
+    "rest, move, return, sine, table, clicks, home, reverse, dither, illegal, walk, reset, clear, zero, preload, disable, disarm,"
+    " repeat"
+)
+DISTURBANCES = (
+    "glitch, bounce, missing, stuck, swap, invert, together, reset, clear, zero, preload, disable, disarm, aperture, unknown"
+)
 ENCODER = "preset, lines, pitch, start, index, delay, duty_error, phase_error, state_error, jitter, eccentricity, hysteresis"
 MOVE = "by, speed, accel, decel, jerk, start_speed, end_speed"
 TIME = "expected a number and a unit for a time: s, ms, us, ns, ps, clocks, dwell, shortest, reject, pass, settle"
@@ -323,7 +328,8 @@ CASES = [
     other(
         "needs",
         "[cuont]",
-        "@[0]: found 'cuont', expected count, direction, step, error, sticky-error, clear-error, index, reset, no-reset or filter"
+        "@[0]: found 'cuont', expected count, direction, step, error, sticky-error, index, reset, no-reset, filter, clear-error,"
+        " clear-count, preload, enable or arm"
         " (did you mean 'count'?)",
     ),
     other("power_up", "1", "@: found '1', expected false or true"),

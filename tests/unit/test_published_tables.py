@@ -61,7 +61,7 @@ def counts(contract: Contract, start: int, states: list[str], gate: list[int] | 
     """The count before the first and after every event."""
     events = events_of(contract, states, gate)
     assert contract.count is not None
-    return [start, *counted(contract.count, events.step, events.zero, start).tolist()]
+    return [start, *counted(contract.count, events.step, events.sets, events.to, start).tolist()]
 
 
 def run_of(first: str, moves: int) -> list[str]:

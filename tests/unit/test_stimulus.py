@@ -9,7 +9,7 @@ from pathlib import Path
 import numpy as np
 import pytest
 
-from tbkit.contract import Clock, Contract, Count, Design, Filter, Latency, Port, Reset, Span, Start
+from tbkit.contract import Clock, Contract, Count, Design, Filter, Latency, Output, Port, Reset, Slice, Span, Start
 from tbkit.errors import UnfitError
 from tbkit.profile import Action, Bounce, Drive, Encoder, Glitch, IndexMark, Missing, Move, Profile, Repeat, Rest, Walk, Where
 from tbkit.stimulus import Stimulus, compile_stimulus
@@ -28,7 +28,7 @@ CONTRACT = Contract(
     Latency(THREE, THREE, THREE, THREE, THREE, Span(1, 1)),
     reset=Reset(Port("rst"), False, 4),
     start=Start(settle=20),
-    count=Count("n", 8, True, 1, "00", True, "wrap", -128, 127),
+    count=Count(Output("count", (Slice("n"),), 8), True, 1, "00", True, "wrap", -128, 127),
     filter=Filter(2, 3),
 )
 # Reset and its last clock, time to settle, and three eighths of a clock.
@@ -352,7 +352,7 @@ def test_missing_pulses() -> None:
         ),
         (
             lambda: played(Drive("clear", parse("1 clocks", "time"), None)),
-            "it drives the clear input, which this decoder does not have",
+            "it drives the clear-error input, which this decoder does not have",
         ),
         (lambda: played(rest("1 us"), needs=("count", "filter", "sticky-error")), "for decoders with a sticky error"),
         (lambda: played(rest("1 us"), needs=("no-reset", "error")), "for decoders with no reset and an error"),

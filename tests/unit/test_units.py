@@ -9,7 +9,7 @@ from pathlib import Path
 
 import pytest
 
-from tbkit.contract import Clock, Contract, Count, Design, Filter, Latency, Port, Span, Start
+from tbkit.contract import Clock, Contract, Count, Design, Filter, Latency, Output, Port, Slice, Span, Start
 from tbkit.errors import UnfitError
 from tbkit.units import LONGEST_PS, Scale, parse
 
@@ -24,7 +24,7 @@ CONTRACT = Contract(
     Port("b"),
     Latency(THREE, THREE, THREE, THREE, THREE, Span(1, 1)),
     start=Start(count=100, settle=40),
-    count=Count("n", 8, True, 1, "00", True, "wrap", -128, 127),
+    count=Count(Output("count", (Slice("n"),), 8), True, 1, "00", True, "wrap", -128, 127),
     filter=Filter(2, 5),
     shortest_state=2,
 )
