@@ -27,8 +27,10 @@ from tbkit import __version__
 from tbkit.contract import BENCH, Contract, Design
 from tbkit.errors import SimulatorError
 from tbkit.render import render_bench
+from tbkit.render_vhdl import render_vhdl
 from tbkit.simulators import Simulator
 from tbkit.stimulus import Stimulus
+from tbkit.vhdlports import read_ports
 
 BUILD_SECONDS = 600
 #: A run gets this long, and a second for this many clock periods: far slower than any simulator that is alive.
@@ -148,8 +150,9 @@ def build(contract: Contract, simulator: Simulator, out: Path) -> Build:
     Raises:
         SimulatorError: it would not compile; the text holds the compiler's own message.
     """
-    bench = render_bench(contract)
     design = contract.design
+    bench = render_vhdl(contract, read_ports(design)) if design.language == "vhdl" else render_bench(contract)
+    bench_file = f"{BENCH}.{'vhd' if design.language == 'vhdl' else 'sv'}"
     folder = out / "build" / f"{simulator.name}-{digest(design, bench, simulator)}"
     if folder.is_dir():
         return Build(simulator, folder)
@@ -157,12 +160,13 @@ def build(contract: Contract, simulator: Simulator, out: Path) -> Build:
     runtime = hashlib.blake2b(f"{simulator} {metadata.version('cocotb')} {sys.executable}".encode(), digest_size=6)
     # Built aside and put in place when whole, so that an interrupted build is never taken for a good one.
     work = Path(tempfile.mkdtemp(prefix="unfinished-", dir=folder.parent))
-    (work / f"{BENCH}.sv").write_text(bench, "utf-8")
+    (work / bench_file).write_text(bench, "utf-8")
     request: dict[str, object] = {
         "task": "build",
         "simulator": simulator.name,
         "top": BENCH,
-        "sources": [str(path) for path in (*design.sources, work / f"{BENCH}.sv")],
+        "sources": [str(path) for path in (*design.sources, work / bench_file)],
+        "standard": design.standard,
         "include_dirs": [str(path) for path in design.include_dirs],
         "build_folder": str(work),
         "runtime_folder": str(folder.parent / f"runtime-{runtime.hexdigest()}"),
@@ -240,6 +244,8 @@ def _play_group(
         "top": BENCH,
         "build_folder": str(ready.folder),
         "job_folder": str(folder),
+        "sources": [str(path) for path in (*contract.design.sources, ready.folder / f"{BENCH}.vhd")],
+        "standard": contract.design.standard,
         "zeroed": contract.start.zeroed and ready.simulator.four_state,
     }
     seconds = RUN_SECONDS + sum(stimuli[n].periods for n in group) / SLOWEST_CLOCKS_PER_SECOND

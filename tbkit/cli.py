@@ -49,7 +49,10 @@ def _parser() -> argparse.ArgumentParser:
     check.add_argument("decoder", metavar="DECODER", type=Path, help="decoder file (YAML)")
     check.add_argument("profiles", metavar="PROFILE", type=Path, nargs="*", help="your own profiles, run after the built-in ones")
     check.add_argument(
-        "--simulator", choices=CHOICES, default="auto", help="auto: Icarus if it is there, else Verilator, else the embedded one"
+        "--simulator",
+        choices=CHOICES,
+        default="auto",
+        help="auto: Icarus if it is there, else Verilator, else the embedded one; GHDL for VHDL",
     )
     check.add_argument("--seed", type=_seed, default=1, metavar="N", help="for everything that is random (default: 1)")
     check.add_argument("--out", type=Path, default=Path("tbkit-out"), metavar="DIR", help="build folder (default: tbkit-out)")
@@ -136,7 +139,7 @@ def _verify(options: argparse.Namespace, console: Console, complain: Console) ->
     failure: SimulatorError | None = None
     options.out.mkdir(parents=True, exist_ok=True)
     (options.out / ".gitignore").write_text("*\n", "utf-8")
-    for simulator in find(options.simulator):
+    for simulator in find(options.simulator, contract.design.language):
         try:
             with _Progress(complain) as progress:
                 results.append(verify(contract, planned, simulator, options.out.resolve(), progress))

@@ -39,12 +39,17 @@ class Span:
 
 @dataclass(frozen=True, slots=True)
 class Design:
-    """The RTL: top module, source files in order, parameter values."""
+    """The RTL: top module, source files in order, parameter values; ``standard`` is that of VHDL sources, else empty."""
 
     top: str
     sources: tuple[Path, ...]
     include_dirs: tuple[Path, ...] = ()
     parameters: tuple[tuple[str, int | str], ...] = ()
+    standard: str = ""
+
+    @property
+    def language(self) -> str:
+        return "vhdl" if self.standard else "verilog"
 
 
 @dataclass(frozen=True, slots=True)
@@ -58,7 +63,7 @@ class Port:
 
 @dataclass(frozen=True, slots=True)
 class Slice:
-    """Bits ``high`` down to ``low`` of an output port; None: the whole port."""
+    """Bits ``high`` down to ``low`` of an output port; None: the whole port. ``port.element`` is part of a record."""
 
     port: str
     high: int | None = None
@@ -67,12 +72,16 @@ class Slice:
 
 @dataclass(frozen=True, slots=True)
 class Output:
-    """One output: ``width`` bits, the most significant slice first; ``active_low`` inverts a single bit."""
+    """One output: ``width`` bits, the most significant slice first; ``active_low`` inverts a single bit.
+
+    ``literal``: of an enumeration; the output is 1 while the port has that value.
+    """
 
     name: str
     slices: tuple[Slice, ...]
     width: int = 1
     active_low: bool = False
+    literal: str = ""
 
 
 @dataclass(frozen=True, slots=True)

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import re
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from fractions import Fraction
 from pathlib import Path
 from typing import TypeVar
@@ -32,13 +32,14 @@ from tbkit.contract import (
     Start,
     Step,
 )
+from tbkit.contract_check import check_together
 from tbkit.yamltree import Entry, Section, identifier_fault, load, one_of, quoted, whole_number
 
 T = TypeVar("T")
 
 FORMAT = 1
 LONGEST_CLOCKS = 1_000_000
-VERILOG_SUFFIXES = (".v", ".sv")
+VERILOG_SUFFIXES, VHDL_SUFFIXES = (".v", ".sv"), (".vhd", ".vhdl")
 SHORTEST_PERIOD_PS = 8
 MOST_CLOCKS_A_TICK = 1_000_000
 #: What is called a clock of a decoder that has none.
@@ -79,13 +80,14 @@ def _slice(entry: Entry) -> Slice:
     """``pos``, ``status[3]`` or ``status[23:8]``."""
 
     def read(text: str) -> Slice:
-        match = re.fullmatch(r"([^\[\]]+)(?:\[(\d{1,4})(?::(\d{1,4}))?\])?", text)
+        match = re.fullmatch(r"([^\[\].]+(?:\.\w+)?)(?:\[(\d{1,4})(?::(\d{1,4}))?\])?", text)
         if match is None:
             msg = f'found {quoted(text)}, expected a port such as pos, or bits of one such as "status[3]" or "status[23:8]"'
             raise ValueError(msg)
         name, high, low = match.groups()
-        if fault := identifier_fault(name):
-            raise ValueError(fault)
+        for part in name.split("."):
+            if fault := identifier_fault(part):
+                raise ValueError(fault)
         if high is None:
             return Slice(name)
         if low is not None and int(low) > int(high):
@@ -167,24 +169,34 @@ class _Reader:
 
     top: Section
     folder: Path
+    vhdl: bool = False
 
     def design(self) -> Design:
         entry = self.top.require("decoder", "{top: my_decoder, sources: [my_decoder.v]}")
         if entry is None:
             return Design("", ())
-        section = entry.section(("top", "sources", "include_dirs", "parameters"))
+        section = entry.section(("top", "sources", "standard", "include_dirs", "parameters"))
         top = section.require("top", "my_decoder")
         sources = section.require("sources", "[my_decoder.v]")
         folders = section.get("include_dirs")
-        parameters = section.get("parameters")
+        parameters, standard_entry = section.get("parameters"), section.get("standard")
+        # A file that two of them name is compiled once.
+        files = tuple(dict.fromkeys(path for item in sources.items() for path in self._sources(item))) if sources else ()
+        vhdl = [path for path in files if path.suffix in VHDL_SUFFIXES]
+        if sources and vhdl and len(vhdl) < len(files):
+            other = next(path for path in files if path not in vhdl)
+            sources.problem(f"{vhdl[0].name!r} is VHDL and {other.name!r} is Verilog; a decoder is in one language")
+        standard = standard_entry.choice(("93", "08")) if standard_entry else "08"
+        if standard_entry and not vhdl:
+            standard_entry.problem("`standard` is for VHDL sources; Verilog is read as SystemVerilog 2012")
         return Design(
             self._top(top) if top else "",
-            # A file that two of them name is compiled once.
-            tuple(dict.fromkeys(path for item in sources.items() for path in self._sources(item))) if sources else (),
+            files,
             tuple(self._folder(item) for item in folders.items()) if folders else (),
             tuple(self._parameter(name, value) for name, value in parameters.pairs("a map of parameter names and values"))
             if parameters
             else (),
+            standard if vhdl else "",
         )
 
     @staticmethod
@@ -196,9 +208,6 @@ class _Reader:
 
     def _sources(self, entry: Entry) -> list[Path]:
         def read(text: str) -> list[Path]:
-            if Path(text).suffix.lower() in (".vhd", ".vhdl"):
-                msg = f"{quoted(text)} is VHDL, which is not supported by this version of tbkit; supported: .v and .sv files"
-                raise ValueError(msg)
             if any("**" in part and part != "**" for part in Path(text).parts):
                 msg = f"found {quoted(text)}, but ** stands for whole folders only, as in rtl/**/*.v"
                 raise ValueError(msg)
@@ -217,8 +226,8 @@ class _Reader:
                     msg = f"no file matches {quoted(text)} in {str(self.folder)!r}"
                     raise ValueError(msg)
             for path in found:
-                if path.suffix not in VERILOG_SUFFIXES:
-                    msg = f"{path.name!r} does not end in {one_of(VERILOG_SUFFIXES)}"
+                if path.suffix not in VERILOG_SUFFIXES + VHDL_SUFFIXES:
+                    msg = f"{path.name!r} does not end in {one_of(VERILOG_SUFFIXES + VHDL_SUFFIXES)}"
                     raise ValueError(msg)
             return [path.resolve() for path in found]
 
@@ -442,9 +451,11 @@ class _Reader:
         section = entry.section(("port", "forward", "valid"))
         port, forward = section.require("port", "dir"), section.require("forward", "1")
         valid = section.require("valid", "with-count")
+        literal = forward is not None and self.vhdl and not forward.is_list and bool(re.fullmatch(r"[A-Za-z]\w*", forward.text()))
+        output = _one_bit("direction", port)
         return Direction(
-            _one_bit("direction", port),
-            forward.level() if forward else 1,
+            replace(output, literal=forward.text()) if forward and literal else output,
+            forward.level() if forward and not literal else 1,
             valid is not None and valid.choice(("always", "with-count", "with-step")) != "always",
         )
 
@@ -576,10 +587,11 @@ def read_contract(path: Path) -> Contract:
     a, b, index_line = reader.lines()
     illegal, shortest, timers = top.get("illegal"), top.get("shortest_state"), top.get("timers")
     illegal_count = illegal.section(("count",)).require("count", "hold") if illegal else None
-    count = reader.count()
+    count, design = reader.count(), reader.design()
+    reader.vhdl = design.language == "vhdl"
     contract = Contract(
         path,
-        reader.design(),
+        design,
         reader.clock(),
         a,
         b,
@@ -599,81 +611,6 @@ def read_contract(path: Path) -> Contract:
         shortest.integer(1, LONGEST_CLOCKS) if shortest else 1,
         timers is not None and timers.flag(),
     )
-    _check_together(contract, top)
+    check_together(contract, top)
     document.finish()
     return contract
-
-
-def _check_together(contract: Contract, top: Section) -> None:
-    """Meaning that takes more than one key to see; a section that is not sound in itself is left out of it."""
-
-    def note(text: str, key: str, *others: str) -> None:
-        """Note a problem at ``key``, or at the whole file where that is not given."""
-        entries = [entry for each in (key, *others) if (entry := top.get(each))]
-        if top.entry.is_map and all(entry.sound for entry in entries):
-            (top.get(key) or top.entry).problem(text)
-
-    if contract.count is None and contract.step is None:
-        note("a decoder needs a `count` or a `step` output: without one there is nothing to check", "direction")
-    if contract.index is not None and contract.index_line is None:
-        note("an index action needs the index line; add it as `lines: {index: enc_z}`", "index", "lines")
-    if contract.index is not None and contract.index.action != "pulse" and contract.count is None:
-        note("an index action other than `pulse` needs a `count` output", "index")
-    if contract.index is not None and contract.count is not None and not _in_range(contract.count, contract.index.value):
-        note(f"the value {contract.index.value} {_outside(contract.count)}", "index", "count")
-    if contract.input("clear-error") and (contract.error is None or not contract.error.sticky):
-        note("a clear-error input needs `error: {kind: sticky}`", "inputs", "error")
-    for role in ("clear-count", "preload"):
-        one = contract.input(role)
-        if one and contract.count is None:
-            note(f"a {role} input needs a `count` output", "inputs")
-        elif one and contract.count and not _in_range(contract.count, one.value):
-            note(f"the value {one.value} of the {role} input {_outside(contract.count)}", "inputs", "count")
-    if contract.input("arm") and contract.index is None:
-        note("an arm input needs an `index` action", "inputs")
-    if contract.count is not None and not _in_range(contract.count, contract.start.count):
-        note(f"the start count {contract.start.count} {_outside(contract.count)}", "start", "count")
-    if contract.clock.tick and contract.reset and contract.reset.clocks < 2:
-        note("with a tick, write how many ticks the reset lasts, 2 at least", "reset")
-    _check_ports(contract, note)
-
-
-def _in_range(count: Count, value: int) -> bool:
-    return count.lowest <= value <= count.highest
-
-
-def _outside(count: Count) -> str:
-    return f"is outside the count's range {count.lowest} to {count.highest}"
-
-
-def _check_ports(contract: Contract, note: Callable[..., None]) -> None:
-    """Every bit of a port is used once; a port that is used whole is used once."""
-    ports: list[tuple[str, Port | None]] = [
-        ("clock", Port(contract.clock.port)),
-        ("clock", contract.clock.tick),
-        ("reset", contract.reset.port if contract.reset else None),
-        ("lines", contract.a),
-        ("lines", contract.b),
-        ("lines", contract.index_line),
-        *(("inputs", one.port) for one in contract.inputs),
-        *(("inputs", Port(constant.port)) for constant in contract.constants),
-    ]
-    keys = {"up": "step", "down": "step"}
-    used = [(key, Slice(port.name, port.bit, port.bit)) for key, port in ports if port is not None]
-    used += [(keys.get(output.name, output.name), one) for output in contract.outputs for one in output.slices]
-    seen: dict[str, list[tuple[Slice, str]]] = {}
-    for key, one in used:
-        if not one.port:
-            continue
-        uses = seen.setdefault(one.port, [])
-        clash = next((other for before, other in uses if _overlap(before, one)), None)
-        if clash:
-            bits = "" if one.high is None else f"[{one.high}]" if one.high == one.low else f"[{one.high}:{one.low}]"
-            note(f"the port {one.port + bits!r} is used twice" + (f"; `{clash}` uses it already" if clash != key else ""), key)
-        uses.append((one, key))
-
-
-def _overlap(one: Slice, other: Slice) -> bool:
-    if one.high is None or one.low is None or other.high is None or other.low is None:
-        return True
-    return one.low <= other.high and other.low <= one.high

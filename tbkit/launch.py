@@ -81,6 +81,15 @@ def _keep(folder: Path, kept: Path) -> None:
             shutil.rmtree(fresh)  # another build was first
 
 
+def build_ghdl(request: dict[str, Any]) -> None:
+    _analyse_vhdl(request, Path(request["build_folder"]))
+    _call(["ghdl", "-e", f"--std={request['standard']}", f"--workdir={request['build_folder']}", request["top"]])
+
+
+def _analyse_vhdl(request: dict[str, Any], folder: Path) -> None:
+    _call(["ghdl", "-a", f"--std={request['standard']}", f"--workdir={folder}", *request["sources"]])
+
+
 def _call(command: list[str]) -> None:
     done = subprocess.run(command, check=False)  # noqa: S603  # words made above, no shell
     if done.returncode:
@@ -91,14 +100,23 @@ def play(request: dict[str, Any]) -> None:
     if find_libpython.find_libpython() is None:
         sys.exit("Python's shared library was not found, and cocotb needs it; on Debian and Ubuntu: apt-get install python3-dev")
     folder = Path(request["job_folder"])
-    get_runner(request["simulator"]).test(
+    ghdl = request["simulator"] == "ghdl"
+    if ghdl:
+        # It compiles in memory as it starts, and looks for the files where they were when it analysed them.
+        _analyse_vhdl(request, folder)
+    runner = get_runner(request["simulator"])
+    runner.hdl_library = "work"
+    runner.test(
         test_module="tbkit.insim.player",
         hdl_toplevel=request["top"],
-        hdl_toplevel_lang="verilog",
+        hdl_toplevel_lang="vhdl" if ghdl else "verilog",
+        hdl_toplevel_library="work" if ghdl else "top",
+        test_args=[f"--std={request['standard']}", f"--workdir={folder}"] if ghdl else [],
         build_dir=request["build_folder"],
         test_dir=folder,
         results_xml=str(folder / "results.xml"),
-        plusargs=[f"+tbkit_folder={folder}"],
+        # What numeric_std says of X would fill the log.
+        plusargs=["--ieee-asserts=disable"] if ghdl else [f"+tbkit_folder={folder}"],
         extra_env={
             "TBKIT_FOLDER": str(folder),
             "TBKIT_ZEROED": str(int(request["zeroed"])),
@@ -116,6 +134,8 @@ def main() -> None:
             build_icarus(request)
         case "build", "verilator":
             build_verilator(request)
+        case "build", "ghdl":
+            build_ghdl(request)
         case _:
             play(request)
 

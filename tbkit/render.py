@@ -18,8 +18,9 @@ from tbkit.stimulus import SIGNALS, UNKNOWN
 from tbkit.trace import record_words
 
 
-def _environment() -> jinja2.Environment:
-    return jinja2.Environment(
+def template(name: str) -> jinja2.Template:
+    """A template of this package; what it is not given is an error."""
+    environment = jinja2.Environment(
         loader=jinja2.FunctionLoader(lambda name: resources.files("tbkit.templates").joinpath(name).read_text("utf-8")),
         undefined=jinja2.StrictUndefined,
         trim_blocks=True,
@@ -27,6 +28,21 @@ def _environment() -> jinja2.Environment:
         keep_trailing_newline=True,
         autoescape=False,  # noqa: S701  # HDL is rendered, not HTML
     )
+    return environment.get_template(name)
+
+
+def digest_of(context: dict[str, object]) -> str:
+    return hashlib.blake2b(repr(sorted(context.items())).encode(), digest_size=8).hexdigest()
+
+
+def basics() -> dict[str, object]:
+    """What benches in any language are told."""
+    return {
+        "version": __version__,
+        "bench": BENCH,
+        "signals": [{"name": name, "bit": bit, "may_be_unknown": name in LINES} for bit, name in enumerate(SIGNALS)],
+        "unknown_bit": UNKNOWN.bit_length() - 1,
+    }
 
 
 def sv_literal(value: int, width: int) -> str:
@@ -46,8 +62,8 @@ def sv_parameter(value: int | str) -> str:
     return f'"{value}"' if isinstance(value, str) else str(value)
 
 
-def _inputs(contract: Contract) -> list[tuple[Port, str]]:
-    """Driven one-bit ports with the signal of the bench that drives them."""
+def driven(contract: Contract) -> list[tuple[Port, str]]:
+    """Driven one-bit ports with the signal of the bench that drives them, ``~`` before it where it is inverted."""
     ports = {
         "a": contract.a,
         "b": contract.b,
@@ -78,7 +94,7 @@ def _bits(one: Slice) -> str:
 
 
 def _context(contract: Contract) -> dict[str, object]:
-    inputs = _inputs(contract)
+    inputs = driven(contract)
     vectors: dict[str, list[tuple[int, str]]] = {}
     ports = [{"name": contract.clock.port, "value": "clock"}] if contract.clock.port else []
     for port, value in inputs:
@@ -101,10 +117,7 @@ def _context(contract: Contract) -> dict[str, object]:
     if clock.tick:
         ports.append({"name": clock.tick.name, "value": "~tick" if clock.tick.active_low else "tick"})
     return {
-        "version": __version__,
-        "bench": BENCH,
-        "signals": [{"name": name, "bit": bit, "may_be_unknown": name in LINES} for bit, name in enumerate(SIGNALS)],
-        "unknown_bit": UNKNOWN.bit_length() - 1,
+        **basics(),
         "outputs": [
             {
                 "name": output.name,
@@ -142,5 +155,4 @@ def _context(contract: Contract) -> dict[str, object]:
 def render_bench(contract: Contract) -> str:
     """The text of the bench; the same contract gives the same bytes."""
     context = _context(contract)
-    digest = hashlib.blake2b(repr(sorted(context.items())).encode(), digest_size=8).hexdigest()
-    return _environment().get_template("bench.sv.j2").render(digest=digest, **context)
+    return template("bench.sv.j2").render(digest=digest_of(context), **context)

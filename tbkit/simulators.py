@@ -14,7 +14,7 @@ from pathlib import Path
 from tbkit.errors import SimulatorError
 
 #: What ``--simulator`` takes.
-CHOICES = ("auto", "icarus", "verilator", "all")
+CHOICES = ("auto", "icarus", "verilator", "ghdl", "all")
 #: cocotb 2.x refuses older ones.
 OLDEST_VERILATOR = (5, 36)
 
@@ -24,7 +24,7 @@ class Simulator:
     """A simulator that is here.
 
     Attributes:
-        name: ``icarus`` or ``verilator``.
+        name: ``icarus``, ``verilator`` or ``ghdl``.
         version: as its own command reports it.
         environment: variables to set for building and running.
         four_state: whether it knows X and Z.
@@ -91,12 +91,26 @@ def _verilator() -> Simulator:
     return found
 
 
-def find(choice: str) -> list[Simulator]:
-    """The simulators for one of :data:`CHOICES`.
+def _ghdl() -> Simulator:
+    match = re.search(r"GHDL (\S+)", _answer(["ghdl", "--version"])) if shutil.which("ghdl") else None
+    if match is None:
+        msg = "GHDL was not found on the PATH, and VHDL decoders need it; on Debian and Ubuntu: apt-get install ghdl"
+        raise SimulatorError(msg)
+    return Simulator("ghdl", match.group(1), (), four_state=True)
+
+
+def find(choice: str, language: str = "verilog") -> list[Simulator]:
+    """The simulators for one of :data:`CHOICES` that can take a decoder in this language.
 
     Raises:
-        SimulatorError: what was asked for is not here.
+        SimulatorError: what was asked for is not here, or cannot take the language.
     """
+    if (choice == "ghdl") != (language == "vhdl") and choice not in ("auto", "all"):
+        other = "ghdl" if language == "vhdl" else "icarus or verilator"
+        msg = f"{choice} cannot take a decoder in {'VHDL' if language == 'vhdl' else 'Verilog'}; use --simulator {other}"
+        raise SimulatorError(msg)
+    if language == "vhdl":
+        return [_ghdl()]
     if choice == "verilator":
         return [_verilator()]
     icarus = _icarus()

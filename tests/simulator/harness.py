@@ -27,15 +27,16 @@ LONG_EDGES = 5000
 def need(name: str) -> Simulator:
     """The simulator of this name; without it the test is skipped, or fails where it is required."""
     try:
-        return find(name)[0]
+        return find(name, "vhdl" if name == "ghdl" else "verilog")[0]
     except SimulatorError as error:
         if name in os.environ.get(REQUIRE, "").split(","):
             pytest.fail(f"{REQUIRE} asks for {name}: {error}", pytrace=False)
         pytest.skip(str(error))
 
 
-def decoder_files() -> list[Path]:
-    return sorted(DECODERS.glob("*.yaml"))
+def decoder_files(language: str) -> list[Path]:
+    """Right decoders under the tests; those in VHDL have that in their names."""
+    return sorted(path for path in DECODERS.glob("*.yaml") if path.stem.endswith("_vhdl") == (language == "vhdl"))
 
 
 def play(contract: Contract, planned: Plan, simulator: Simulator, out: Path) -> Results:

@@ -42,6 +42,10 @@ class Mutant:
         return self.decoder or Path(self.file).stem
 
     @property
+    def vhdl(self) -> bool:
+        return self.file.endswith(".vhd")
+
+    @property
     def folder(self) -> Path:
         return EXAMPLES if self.stem == "spindle" else DECODERS
 
@@ -853,8 +857,72 @@ MUTANTS = (
         ("start-up-count", "count-extra"),
         "F36: comes up away from 00 and counts what was no motion",
     ),
+    # --- VHDL
+    Mutant(
+        "vhdl-direction-of-before-the-reversal",
+        "xor_form_vhdl.vhd",
+        "          if forward = '1' then\n            value",
+        "          if last_up = '1' then\n            value",
+        ("count-wrong", "count-extra", "count-lost"),
+        "F1: direction memory wrong at a reversal",
+    ),
+    Mutant(
+        "vhdl-fault-blind-in-one-state",
+        "xor_form_vhdl.vhd",
+        "fault <= both;",
+        "fault <= both and not (a_seen(1) and not b_seen(1));",
+        ("error-missed",),
+        "F4: one kind of illegal transition is not reported",
+    ),
+    Mutant(
+        "fault-blind-in-one-state",
+        "xor_form.v",
+        "fault <= both;",
+        "fault <= both & ~(a_seen[1] & ~b_seen[1]);",
+        ("error-missed",),
+        "F4: one kind of illegal transition is not reported",
+    ),
+    Mutant(
+        "vhdl-stops-one-too-far",
+        "homing_x1_vhdl.vhd",
+        "if inc and value < TOP then",
+        "if inc and value <= TOP then",
+        ("roll-over-wrong",),
+        "F32: the count stops one beyond its end",
+    ),
+    Mutant(
+        "stops-one-too-far",
+        "homing_x1.sv",
+        "slot < 7'd90",
+        "slot <= 7'd90",
+        ("roll-over-wrong",),
+        "F32: the count stops one beyond its end",
+    ),
+    Mutant(
+        "vhdl-wrong-way-told",
+        "status_vhdl/status_vhdl.vhd",
+        "moved <= DOWN;",
+        'if seen = "01" then moved <= UP; else moved <= DOWN; end if;',
+        ("direction-wrong",),
+        "F7: the direction is wrong on one transition",
+        decoder="status_vhdl",
+    ),
+    Mutant(
+        "vhdl-unknown-for-ever",
+        "xor_form_vhdl.vhd",
+        "value <= (others => '0');",
+        "null;",
+        ("unknown-level",),
+        "F26: the count is never reset, and unknown for ever",
+        four_state=True,
+    ),
 )
 
+#: The same fault in the same decoder, in Verilog and in VHDL.
+TWINS = (
+    ("fault-blind-in-one-state", "vhdl-fault-blind-in-one-state"),
+    ("stops-one-too-far", "vhdl-stops-one-too-far"),
+)
 
 # Faults that the built-in regression does not find, each with the reason.
 UNSEEN = (

@@ -10,7 +10,7 @@ from pathlib import Path
 
 import pytest
 from harness import decoder_files, play, random_part, told, whole
-from mutants import EXAMPLES
+from mutants import DECODERS, EXAMPLES
 
 from tbkit.contract_file import read_contract
 from tbkit.errors import SimulatorError
@@ -20,7 +20,7 @@ from tbkit.verify import Plan
 SOAK = os.environ.get("TBKIT_SOAK") == "1"
 #: One past the last seed that is played, on Icarus and on Verilator.
 END, END_ON_VERILATOR = (51, 51) if SOAK else (21, 4)
-FILES = [*decoder_files(), *(EXAMPLES / f"{name}.yaml" for name in ("spindle", "traverse", "knob"))]
+FILES = [*decoder_files("verilog"), *(EXAMPLES / f"{name}.yaml" for name in ("spindle", "traverse", "knob"))]
 decoders = pytest.mark.parametrize("file", FILES, ids=lambda file: file.stem)
 
 
@@ -57,6 +57,31 @@ def test_verilator_agrees(file: Path, simulator: Simulator, out: Path) -> None:
         return
     other = play(contract, planned, icarus, out)
     assert [(p.name, p.seed, p.score) for p in results.profiles] == [(p.name, p.seed, p.score) for p in other.profiles]
+
+
+VHDL = decoder_files("vhdl")
+
+
+@pytest.mark.simulator("ghdl")
+@pytest.mark.parametrize("file", VHDL, ids=lambda file: file.stem)
+def test_ghdl(file: Path, simulator: Simulator, out: Path) -> None:
+    contract = read_contract(file)
+    planned = Plan((*whole(contract).stimuli, *random_part(contract, range(2, END)).stimuli), ())
+    results = play(contract, planned, simulator, out)
+    assert results.verdict == "pass", told(results)
+
+
+@pytest.mark.simulator("ghdl")
+@pytest.mark.parametrize("stem", ["xor_form", "homing_x1", "step_direction"])
+def test_twins_in_two_languages(stem: str, simulator: Simulator, out: Path) -> None:
+    """A decoder written twice, once in each language, gives the same scores."""
+    scores = []
+    for name, on in ((stem, find("icarus")[0]), (f"{stem}_vhdl", simulator)):
+        contract = read_contract(DECODERS / f"{name}.yaml")
+        results = play(contract, whole(contract), on, out)
+        scores.append([(profile.name, profile.edges, profile.score) for profile in results.profiles if profile.score])
+    assert len(scores[0]) > 20
+    assert scores[0] == scores[1]
 
 
 def test_every_seed_plays_something_else() -> None:

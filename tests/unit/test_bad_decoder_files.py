@@ -77,9 +77,30 @@ CASES = [
     ),
     case("empty-source", "2: decoder.sources[0]: found nothing, expected a value", decoder="{top: d, sources: ['']}"),
     case(
-        "vhdl",
-        f"2: decoder.sources[0]: 'old.vhd' is VHDL, which {UNSUPPORTED}; supported: .v and .sv files",
+        "record-in-verilog",
+        "6: count: 'st.count' is part of a record, which only VHDL ports have",
+        count="{port: st.count, width: 8, signed: false}",
+    ),
+    case(
+        "zeroed-vhdl",
+        "8: start: `power_up: zero` is for Verilog; give the VHDL signals initial values",
         decoder="{top: d, sources: [old.vhd]}",
+        start="{power_up: zero}",
+    ),
+    case(
+        "two-languages",
+        "2: decoder.sources: 'old.vhd' is VHDL and 'd.v' is Verilog; a decoder is in one language",
+        decoder="{top: d, sources: [d.v, old.vhd]}",
+    ),
+    case(
+        "standard-of-verilog",
+        "2: decoder.standard: `standard` is for VHDL sources; Verilog is read as SystemVerilog 2012",
+        decoder="{top: d, sources: [d.v], standard: 08}",
+    ),
+    case(
+        "standard-unknown",
+        "2: decoder.standard: found '2008', expected 93 or 08 (did you mean '08'?)",
+        decoder="{top: d, sources: [old.vhd], standard: 2008}",
     ),
     case(
         "missing-source",
@@ -98,7 +119,7 @@ CASES = [
     ),
     case(
         "other-suffix",
-        "2: decoder.sources[0]: 'notes.txt' does not end in .v or .sv",
+        "2: decoder.sources[0]: 'notes.txt' does not end in .v, .sv, .vhd or .vhdl",
         decoder="{top: d, sources: [notes.txt]}",
     ),
     case("glob-matches-nothing", "2: decoder.sources[0]: no file matches '*.sv' in '.'", decoder="{top: d, sources: ['*.sv']}"),
@@ -109,7 +130,7 @@ CASES = [
     ),
     case(
         "glob-matches-other-suffix",
-        "2: decoder.sources[0]: 'notes.txt' does not end in .v or .sv",
+        "2: decoder.sources[0]: 'notes.txt' does not end in .v, .sv, .vhd or .vhdl",
         decoder="{top: d, sources: ['**/*.txt']}",
     ),
     case(
