@@ -53,13 +53,13 @@ class Course:
     """Grows piece by piece; ``at`` (states) is exact between actions, ``now_ps`` always."""
 
     def __init__(
-        self, scale: Scale, start_state: str, start_ps: int, rng: np.random.Generator, marks: Sequence[Window] = ()
+        self, scale: Scale, start: Fraction, start_ps: int, rng: np.random.Generator, marks: Sequence[Window] = ()
     ) -> None:
         self.scale = scale
         self.rng = rng
         self.marks = marks
         self.now_ps = start_ps
-        self.at = A_LEADS_B.index(start_state) + Fraction(1, 2)
+        self.at = start
         self.origin = self.at
         self.travel = Fraction(0)
         self.pieces: list[_Piece] = []
@@ -357,17 +357,17 @@ class Course:
 def build_motion(
     actions: Sequence[Action],
     scale: Scale,
-    start_state: str,
+    start: Fraction,
     start_ps: int,
     rng: np.random.Generator,
     marks: Sequence[Window] = (),
 ) -> Motion:
-    """Lay the actions one after another, starting at ``start_ps`` in the middle of ``start_state``.
+    """Lay the actions one after another, starting at ``start_ps`` and at ``start`` (states).
 
     Raises:
         UnfitError: an action has no meaning for this decoder or encoder, or cannot be done.
     """
-    course = Course(scale, start_state, start_ps, rng, marks)
+    course = Course(scale, start, start_ps, rng, marks)
     for action in actions:
         course.act(action)
     return course.motion()

@@ -8,10 +8,11 @@ from __future__ import annotations
 
 import zlib
 from dataclasses import dataclass, replace
+from fractions import Fraction
 
 import numpy as np
 
-from tbkit.contract import DEEDS, Contract
+from tbkit.contract import A_LEADS_B, DEEDS, Contract
 from tbkit.course import build_motion
 from tbkit.disturb import Disturbed, Scene, disturb
 from tbkit.encoder import LINES, Edges, Line, encode, index_windows
@@ -174,8 +175,12 @@ class Scenario:
     begin_ps: int
 
 
-def lay_out(profile: Profile, scale: Scale, seed: int, begin_ps: int, most_states: int = MOST_PERIODS) -> Scenario:
+def lay_out(
+    profile: Profile, scale: Scale, seed: int, begin_ps: int, most_states: int = MOST_PERIODS, place: Fraction | None = None
+) -> Scenario:
     """Motion, encoder and disturbances of a profile; the motion begins at ``begin_ps``.
+
+    The shaft begins at ``place`` (states), or where the encoder tells.
 
     Raises:
         UnfitError: something has no meaning for this decoder, or there are more than ``most_states``.
@@ -185,7 +190,8 @@ def lay_out(profile: Profile, scale: Scale, seed: int, begin_ps: int, most_state
         return generator(seed, profile.name, use)
 
     encoder = profile.encoder
-    motion = build_motion(profile.motion, scale, encoder.start, begin_ps, generators("motion"), index_windows(encoder))
+    start = A_LEADS_B.index(encoder.start) + Fraction(1, 2) if place is None else place
+    motion = build_motion(profile.motion, scale, start, begin_ps, generators("motion"), index_windows(encoder))
     # A state takes a clock at least, or nothing could be counted: said before the edges are made, which take memory.
     states = int(np.abs(motion.to_states - motion.from_states).sum())
     if states > most_states:

@@ -103,7 +103,7 @@ def read_trace(path: Path, contract: Contract, period_ps: int, periods: int) -> 
         value, unknown = _slice(values, field).astype(np.int64), _slice(unknowns, field) != 0
         if field.output.active_low:
             value = 1 - value
-        series[field.output.name] = _compressed(period, value, unknown)
+        series[field.output.name] = compressed(period, value, unknown)
     return as_trace(contract, series)
 
 
@@ -159,7 +159,7 @@ def _slice(words: npt.NDArray[np.uint64], field: Field) -> npt.NDArray[np.uint64
     return result & np.uint64(mask)
 
 
-def _compressed(period: Int64s, value: Int64s, unknown: npt.NDArray[np.bool_]) -> Series:
+def compressed(period: Int64s, value: Int64s, unknown: npt.NDArray[np.bool_]) -> Series:
     keep = np.ones(len(period), dtype=bool)
     keep[1:] = (value[1:] != value[:-1]) | (unknown[1:] != unknown[:-1])
     return Series(period[keep], value[keep], unknown[keep])

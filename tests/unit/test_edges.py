@@ -81,9 +81,13 @@ def move(by: float, speed: float, accel: float = 0, jerk: float = 0, start: floa
     )
 
 
+def _middle(state: str) -> Fraction:
+    return A_LEADS_B.index(state) + Fraction(1, 2)
+
+
 def built(*actions: Action, encoder: Encoder | None = None, seed: int = 1) -> Motion:
     encoder = encoder or Encoder(LINES)
-    return build_motion(actions, SCALE, encoder.start, 0, np.random.default_rng(seed), index_windows(encoder))
+    return build_motion(actions, SCALE, _middle(encoder.start), 0, np.random.default_rng(seed), index_windows(encoder))
 
 
 def edges(*actions: Action, seed: int = 1, **tolerances: object) -> Edges:
@@ -558,7 +562,7 @@ def test_full_turn(lines: int, start: str, forward: bool, duty: int) -> None:
     scale = replace(SCALE, states={**SCALE.states, "rev": Fraction(4 * lines)})
     encoder = Encoder(lines, start, duty_error_b=deg(duty), state_error=deg(20))
     turn = Move(parse("1 rev" if forward else "-1 rev", "distance"), parse("1 states/us", "speed"))
-    motion = build_motion([turn], scale, start, 0, np.random.default_rng(1))
+    motion = build_motion([turn], scale, _middle(start), 0, np.random.default_rng(1))
     found = encode(motion, encoder, scale, lambda _: np.random.default_rng(1))
     assert np.where(found.ledger.up, 1, -1).sum() == (4 * lines if forward else -4 * lines)
     assert len(found.lines["a"].toggles_ps) == len(found.lines["b"].toggles_ps) == 2 * lines

@@ -37,7 +37,7 @@ def time(text: str) -> Quantity:
 
 
 def built(*actions: Action, start: str = "00", seed: int = 1) -> Motion:
-    return build_motion(actions, SCALE, start, 0, np.random.default_rng(seed))
+    return build_motion(actions, SCALE, A_LEADS_B.index(start) + Fraction(1, 2), 0, np.random.default_rng(seed))
 
 
 def trapezoid(h: float, v: float, a: float) -> Motion:
