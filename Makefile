@@ -6,13 +6,14 @@ READY := $(VENV)/.ready
 # pytest's own options, for example: make test PYTEST_ARGS='-k units'
 PYTEST_ARGS ?=
 
-.PHONY: demo test unit soak lint bench wheel clean help
+.PHONY: demo test unit soak table lint bench wheel clean help
 
 help:
 	@echo 'make demo   set up, verify the example spindle decoder, then catch a planted fault'
 	@echo 'make test   set up, run every check and test'
 	@echo 'make unit   the tests that need no simulator'
 	@echo 'make soak   the tests that draw at random, for long'
+	@echo 'make table  every right and every faulty decoder of the tests, with what was found'
 	@echo 'make lint   ruff and mypy'
 	@echo 'make bench  stimulus and verified edges per second, the latter beside a plain cocotb bench'
 	@echo 'make wheel  build the package into dist/'
@@ -39,6 +40,9 @@ unit: $(READY)
 
 soak: $(READY)
 	TBKIT_SOAK=1 $(BIN)/python -m pytest -n auto tests/unit/test_oracles_bruteforce.py tests/simulator/test_right_decoders.py $(PYTEST_ARGS)
+
+table: $(READY)
+	$(BIN)/python tests/simulator/table.py
 
 lint: $(READY)
 	$(BIN)/ruff check .

@@ -18,6 +18,7 @@ from tbkit.facts import fact_lines, facts
 from tbkit.profile import Profile
 from tbkit.profile_file import read_profile
 from tbkit.regression import builtin_profiles
+from tbkit.rtl import check_against_rtl
 from tbkit.simulators import CHOICES, find
 from tbkit.stimulus import lay_out
 from tbkit.units import Scale
@@ -129,6 +130,8 @@ def _verify(options: argparse.Namespace, console: Console, complain: Console) ->
         profiles = _profiles(options.profiles, options.only)
     except InputError as error:
         problems += error.problems
+    if contract is not None and not problems:
+        problems = check_against_rtl(contract)
     if problems or contract is None:
         raise InputError(problems)
     planned = plan(contract, profiles, options.seed)

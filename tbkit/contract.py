@@ -290,7 +290,7 @@ class Filter:
 
 @dataclass(frozen=True, slots=True)
 class Contract:
-    """Everything a decoder file says; ``file`` is where it was read."""
+    """Everything a decoder file says; ``file`` is where it was read, ``places`` the lines of its keys."""
 
     file: Path
     design: Design
@@ -312,6 +312,7 @@ class Contract:
     filter: Filter = field(default_factory=Filter)
     shortest_state: int = 1
     timers: bool = False
+    places: dict[str, int] = field(default_factory=dict, compare=False, repr=False)
 
     def input(self, role: str) -> Input | None:
         """The input with this role, if there is one."""

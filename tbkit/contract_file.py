@@ -610,6 +610,7 @@ def read_contract(path: Path) -> Contract:
         reader.filter(),
         shortest.integer(1, LONGEST_CLOCKS) if shortest else 1,
         timers is not None and timers.flag(),
+        {key: entry.line for key in top.keys if (entry := top.get(key))},
     )
     check_together(contract, top)
     document.finish()

@@ -138,6 +138,11 @@ def _print_verdict(console: Console, contract: Contract, results: Results, faile
     if clocks:
         share = f"{100 * (1 - open_clocks / clocks):.1f} % of {clocks} clocks compared"
         console.print(f"{share}; the rest is reset, or left open by the contract", style="dim")
+    seen = results.exercised(contract)
+    never = [behaviour for behaviour, many in seen.items() if not many]
+    console.print(f"{len(seen) - len(never)} of {len(seen)} declared behaviours exercised", style="dim")
+    if never:
+        console.print(Text.assemble(("never exercised: ", "yellow"), ", ".join(never)))
     if contract.start.zeroed:
         console.print("registers without an initial value started at 0, as the decoder file says (power_up: zero)", style="dim")
     if not results.simulator.four_state:
@@ -157,6 +162,7 @@ def as_json(contract: Contract, seed: int, results: Sequence[Results]) -> str:
             "simulator": str(one.simulator),
             "seed": seed,
             "failure": str(one.failure) if one.failure else None,
+            "exercised": one.exercised(contract),
             "profiles": [
                 {
                     "name": profile.name,

@@ -4,8 +4,9 @@ from __future__ import annotations
 
 import shutil
 import tempfile
+from collections import Counter
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, field, replace
 from pathlib import Path
 
 import numpy as np
@@ -13,6 +14,7 @@ import numpy as np
 from tbkit import bench, regression
 from tbkit.contract import Contract
 from tbkit.errors import SimulatorError, UnfitError
+from tbkit.exercised import declared, exercised
 from tbkit.findings import Finding, Score
 from tbkit.lineoracle import expect
 from tbkit.profile import Profile
@@ -32,6 +34,7 @@ class ProfileResult:
 
     ``verdict``: ``pass``, ``fail``, ``left-out`` (``reason`` says why), ``empty`` (it compared nothing) or ``not-run`` (the
     simulator failed first). ``undetectable``: what it did that no decoder of A and B could notice, in words.
+    ``exercised``: how often it did what the contract declares (see :mod:`tbkit.exercised`).
     """
 
     name: str
@@ -42,6 +45,7 @@ class ProfileResult:
     score: Score | None = None
     reason: str = ""
     undetectable: tuple[str, ...] = ()
+    exercised: dict[str, int] = field(default_factory=dict)
 
     @property
     def findings(self) -> tuple[Finding, ...]:
@@ -59,6 +63,13 @@ class Results:
     simulator: Simulator
     profiles: tuple[ProfileResult, ...]
     failure: SimulatorError | None
+
+    def exercised(self, contract: Contract) -> dict[str, int]:
+        """How often the whole run did each thing that the contract declares."""
+        total: Counter[str] = Counter()
+        for profile in self.profiles:
+            total.update(profile.exercised)
+        return {behaviour: total[behaviour] for behaviour in declared(contract)}
 
     @property
     def verdict(self) -> str:
@@ -92,13 +103,14 @@ def plan(contract: Contract, profiles: Sequence[Profile], seed: int) -> Plan:
     return Plan(tuple(stimuli), tuple(left_out))
 
 
-def score(contract: Contract, stimulus: Stimulus, trace_file: Path) -> Score:
-    """Hold one trace against both oracles."""
+def score(contract: Contract, stimulus: Stimulus, trace_file: Path) -> tuple[Score, Counter[str]]:
+    """Hold one trace against both oracles; also what it has exercised."""
     expectation = expect(contract, stimulus)
     events = expectation.events
     doubtful = events.period[events.illegal | events.open] * stimulus.period_ps
     trace = read_trace(trace_file, contract, stimulus.period_ps, stimulus.periods)
-    return judge(contract, stimulus, expectation, rests(contract, stimulus, doubtful.astype(np.int64)), trace)
+    result = judge(contract, stimulus, expectation, rests(contract, stimulus, doubtful.astype(np.int64)), trace)
+    return result, exercised(contract, stimulus, expectation, trace)
 
 
 def verify(contract: Contract, planned: Plan, simulator: Simulator, out: Path, progress: Progress) -> Results:
@@ -133,8 +145,9 @@ def verify(contract: Contract, planned: Plan, simulator: Simulator, out: Path, p
 def _judged(contract: Contract, stimulus: Stimulus, trace_file: Path | None) -> ProfileResult:
     if trace_file is None:
         return _unjudged(stimulus)
-    result = score(contract, stimulus, trace_file)
-    judged = replace(_unjudged(stimulus), verdict="fail" if result.findings else "pass", score=result, reason="")
+    result, seen = score(contract, stimulus, trace_file)
+    verdict = "fail" if result.findings else "pass"
+    judged = replace(_unjudged(stimulus), verdict=verdict, score=result, reason="", exercised=dict(seen))
     if result.comparisons == 0 and not result.findings:
         reason = "nothing was compared: the contract leaves everything open that this profile does"
         return replace(judged, verdict="empty", reason=reason)
