@@ -13,6 +13,7 @@ from rich.markup import escape
 
 from tbkit import __version__, report
 from tbkit.contract_file import read_contract
+from tbkit.describe import describe
 from tbkit.errors import InputError, Problem, SimulatorError, UnfitError
 from tbkit.facts import fact_lines, facts
 from tbkit.profile import Profile
@@ -73,7 +74,26 @@ def _parser() -> argparse.ArgumentParser:
         "-o", "--output", type=_picture, metavar="FILE", help="where to draw it: .png or .svg; or .vcd for a wave viewer"
     )
     plot.add_argument("--seed", type=_seed, default=1, metavar="N", help="for everything that is random (default: 1)")
+    found = commands.add_parser(
+        "describe",
+        help="find out what a decoder does, and write its decoder file",
+        description="Reads the ports of a decoder, runs it on slow clean motion, and writes what it found out as a decoder file.",
+    )
+    found.add_argument("sources", metavar="RTL", type=Path, nargs="+", help="source files")
+    found.add_argument("--top", metavar="NAME", help="the top module, if it cannot be told")
+    found.add_argument(
+        "--role", type=_role, action="append", default=[], metavar="ROLE=PORT", help="a port whose name does not tell its role"
+    )
+    found.add_argument("-o", "--output", type=Path, metavar="FILE", help="the decoder file to write (default: print it)")
     return parser
+
+
+def _role(text: str) -> tuple[str, str]:
+    role, _, port = text.partition("=")
+    if port:
+        return role, port
+    msg = f"{text!r} is not of the form ROLE=PORT, such as clock=strobe"
+    raise argparse.ArgumentTypeError(msg)
 
 
 def _picture(text: str) -> Path:
@@ -163,6 +183,20 @@ def _verify(options: argparse.Namespace, console: Console, complain: Console) ->
     return EXIT_INPUT if "error" in verdicts else EXIT_PASS
 
 
+def _describe(options: argparse.Namespace, console: Console) -> int:
+    problems = [Problem(str(path), 0, "there is no such file") for path in options.sources if not path.is_file()]
+    if problems:
+        raise InputError(problems)
+    home = options.output.parent if options.output else Path()
+    text = describe(options.sources, options.top, home, dict(options.role))
+    if options.output is None:
+        console.print(text, end="", markup=False)
+        return EXIT_PASS
+    options.output.write_text(text, "utf-8")
+    console.print(f"wrote {options.output}; read it, then run: tbkit verify {options.output}", markup=False)
+    return EXIT_PASS
+
+
 def _plot(options: argparse.Namespace, console: Console) -> int:
     problems: list[Problem] = []
     contract, profile = None, None
@@ -240,7 +274,13 @@ def main(arguments: Sequence[str] | None = None) -> int:
     console = Console(highlight=False, soft_wrap=True)
     complain = Console(stderr=True, highlight=False, soft_wrap=True)
     try:
-        return _plot(options, console) if options.command == "plot" else _verify(options, console, complain)
+        match options.command:
+            case "plot":
+                return _plot(options, console)
+            case "describe":
+                return _describe(options, console)
+            case _:
+                return _verify(options, console, complain)
     except InputError as error:
         for problem in error.problems:
             complain.print(f"{problem}" if problem.line else f"{problem.file}: {problem.text}", markup=False)

@@ -1,4 +1,4 @@
-"""``make table``: every right decoder and every faulty one under the built-in regression, with what was found and the time taken."""
+"""``make table``: every right and every faulty decoder under the built-in regression, what was found and the time taken."""
 
 from __future__ import annotations
 

@@ -1,0 +1,656 @@
+"""Finds out what a decoder does and writes a decoder file that says so.
+
+Ports get their roles by name, direction and width; the rest is measured on slow clean motion where it can be, and else assumed.
+Every line of the file says which.
+"""
+
+from __future__ import annotations
+
+import itertools
+import os
+import random
+import re
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, field, replace
+from pathlib import Path
+
+from tbkit import units
+from tbkit.contract import (
+    A_LEADS_B,
+    Clock,
+    Constant,
+    Contract,
+    Count,
+    Design,
+    Direction,
+    Error,
+    Latency,
+    Output,
+    Port,
+    Reset,
+    Slice,
+    Span,
+    Start,
+    Step,
+)
+from tbkit.errors import InputError, Problem
+from tbkit.probe import GAP, Script, changes, probe, value_at
+from tbkit.rtl import Rtl, RtlPort, modules, read_rtl
+from tbkit.simulators import find
+from tbkit.trace import Series, Trace
+from tbkit.yamltree import nearest
+
+RATE_MHZ = 100
+#: Widths of pulses, in clocks, that are tried on the filter.
+_WIDTHS = (*range(1, 41), 48, 56, 64, 80, 96, 128)
+#: A count is driven past its ends if that takes no more clocks.
+_FARTHEST_CLOCKS = 2_000_000
+
+_NAMES = {
+    "clock": r"^(i_|in_)?(clk|clock|ck|mclk|sysclk|sys_clk|aclk)(_i|_in)?$",
+    "reset": r"^(i_|in_)?(sys_?|a)?n?(rst|reset|res|por)(_?n|_?b|_i|_in|_ni|_sync|_async)?$",
+    "a": r"(^|_|enc|quad|^q|ch|phase)a(_n|_ni|_i|_in|_raw)?$",
+    "b": r"(^|_|enc|quad|^q|ch|phase)b(_n|_ni|_i|_in|_raw)?$",
+    "index": r"(^|_|enc|quad|^q|ch)(z|i|idx|index|mark|ref|home)(_n|_ni|_i|_in|_raw)?$",
+    "count": r"count|pos|position|cnt|angle|slot|lid",
+    "direction": r"dir|^up$|fwd|forward|^cw$|^way$",
+    "step": r"step|pulse|tick|^ce$|move",
+    "error": r"err|fault|illegal|lost|bad|inval",
+}
+_PAIRS = r"^(i_|in_|enc_?|quad_?)?(ab|ba|lines|enc|quad|phases?)(_i|_in)?$"
+
+
+@dataclass(frozen=True, slots=True)
+class Roles:
+    """Ports by their roles; ``lines`` may be bits of a vector."""
+
+    clock: RtlPort
+    lines: tuple[Port, Port]
+    reset: RtlPort | None = None
+    index: RtlPort | None = None
+    count: RtlPort | None = None
+    direction: RtlPort | None = None
+    step: RtlPort | None = None
+    error: RtlPort | None = None
+    constants: tuple[Constant, ...] = ()
+
+
+@dataclass(slots=True)
+class Draft:
+    """A decoder file in the making: (key, text, how it is known), and what looks wrong."""
+
+    rows: list[tuple[str, str, str]] = field(default_factory=list)
+    doubts: list[str] = field(default_factory=list)
+
+    def add(self, key: str, text: str, how: str) -> None:
+        self.rows.append((key, text, how))
+
+    def text(self, head: str) -> str:
+        width = max(len(f"{key}: {text}") for key, text, _ in self.rows)
+        lines = [f"# {head}", "# How each line is known: measured, named (from a port's name) or assumed.", "tbkit: 1"]
+        lines += [f"{f'{key}: {text}':{width}}  # {how}" for key, text, how in self.rows]
+        lines += [f"# LOOK: {doubt}" for doubt in self.doubts]
+        return "\n".join(lines) + "\n"
+
+
+def describe(sources: Sequence[Path], top: str | None, home: Path, given: Mapping[str, str]) -> str:
+    """The text of a decoder file for the RTL; paths in it start from ``home``.
+
+    ``given``: ports by their roles, for those that names do not tell; a line may be a bit of a vector, as ``ab[1]``.
+
+    Raises:
+        InputError: the top module or a port that is needed cannot be told.
+        SimulatorError: the decoder does not build or run.
+    """
+    files = tuple(path.resolve() for path in sources)
+    rtl, design = _top(files, top)
+    roles = _roles(rtl, files[0], given)
+    draft = Draft()
+    names = ", ".join(_relative(path, home) for path in files)
+    draft.add("decoder", f"{{top: {design.top}, sources: [{names}]}}", "named")
+    _Prober(design, roles, draft).run()
+    return draft.text(f"What tbkit found out about {design.top}; read it, mend it, then run tbkit verify on it.")
+
+
+def _relative(path: Path, home: Path) -> str:
+    return os.path.relpath(path, home.resolve())
+
+
+def _top(files: tuple[Path, ...], top: str | None) -> tuple[Rtl, Design]:
+    vhdl = files[0].suffix in (".vhd", ".vhdl")
+    if top is None:
+        tops = () if vhdl else modules(files)
+        if len(tops) != 1:
+            found = ", ".join(tops) or "none that could be told"
+            raise InputError([Problem(str(files[0]), 1, f"name the top module with --top; modules at the top: {found}")])
+        top = tops[0]
+    design = Design(top, files, standard="08" if vhdl else "")
+    rtl = read_rtl(design)
+    if not isinstance(rtl, Rtl):
+        known = ", ".join(rtl) if rtl else "none that could be read"
+        raise InputError([Problem(str(files[0]), 1, f"there is no module {top!r} in the sources; there are {known}")])
+    return rtl, design
+
+
+def _matches(role: str, name: str) -> bool:
+    return re.search(_NAMES[role], name.lower()) is not None
+
+
+def _roles(rtl: Rtl, file: Path, given: Mapping[str, str]) -> Roles:
+    """Ports by name, direction and width.
+
+    Raises:
+        InputError: the clock, the lines or every output that counts cannot be told.
+    """
+    inputs = [port for port in rtl.ports if not port.is_output]
+    outputs = [port for port in rtl.ports if port.is_output]
+    by_name = {port.name: port for port in rtl.ports}
+    problems = []
+    for role, name in given.items():
+        if role not in _NAMES:
+            problems.append(
+                Problem("--role", 0, f"there is no role {role!r}; there are {', '.join(_NAMES)}{nearest(role, _NAMES)}")
+            )
+        elif name.partition("[")[0] not in by_name:
+            ports = f"its ports are {', '.join(by_name)}{nearest(name, by_name)}"
+            problems.append(Problem("--role", 0, f"{rtl.top!r} has no port {name!r}; {ports}"))
+    if problems:
+        raise InputError(problems)
+
+    def one(role: str, among: list[RtlPort]) -> RtlPort | None:
+        if role in given:
+            return by_name[given[role].partition("[")[0]]
+        taken = {name.partition("[")[0] for name in given.values()}
+        return next((p for p in among if p.width == 1 and p.name not in taken and _matches(role, p.name)), None)
+
+    single = {role: one(role, inputs) for role in ("clock", "reset")}
+    rest = [port for port in inputs if port not in single.values()]
+    index, a, b = (one(role, rest) for role in ("index", "a", "b"))
+    pair = next((p for p in rest if p.width == 2 and re.search(_PAIRS, p.name.lower())), None)  # two lines
+    lines: tuple[Port, Port] | None = None
+    if a and b:
+        lines = (_line(given.get("a", a.name)), _line(given.get("b", b.name)))
+    elif pair:
+        a_first = "ab" in pair.name.lower()
+        lines = (Port(pair.name, int(a_first)), Port(pair.name, int(not a_first)))
+    wide = [p for p in outputs if (p.width or 0) >= 4]  # narrower is a state or flags
+    widest = max(wide, key=lambda p: p.width or 0, default=None)
+    count = by_name[given["count"]] if "count" in given else next((p for p in wide if _matches("count", p.name)), widest)
+    bits = {role: one(role, outputs) for role in ("direction", "step", "error")}
+    for what, found, example in (
+        ("the clock", single["clock"], "clock=PORT"),
+        ("A and which B", lines, "a=PORT --role b=PORT"),
+        ("a count or a step", count or bits["step"], "count=PORT"),
+    ):
+        if found is None:
+            ports = ", ".join(port.name for port in rtl.ports)
+            text = f"which port is {what} cannot be told from the names {ports}; say it with `--role {example}`"
+            problems.append(Problem(str(file), 1, text))
+    clock = single["clock"]
+    if clock is None or lines is None or problems:
+        raise InputError(problems)
+    used = {clock.name, *(line.name for line in lines), *(p.name for p in (single["reset"], index) if p)}
+    constants = tuple(
+        Constant(p.name, int(re.search(r"en|ce$|tick|strobe", p.name.lower()) is not None and not _is_low(p.name)), p.width or 1)
+        for p in inputs
+        if p.name not in used
+    )
+    return Roles(clock, lines, single["reset"], index, count, bits["direction"], bits["step"], bits["error"], constants)
+
+
+def _line(text: str) -> Port:
+    """``enc_a`` or ``ab[1]``."""
+    name, _, bit = text.rstrip("]").partition("[")
+    return Port(name, int(bit) if bit.isdecimal() else None, _is_low(name))
+
+
+def _is_low(name: str) -> bool:
+    return re.search(r"(_n|_b|_ni|n_i)$|^n[a-z]|[a-z]n$", name.lower()) is not None and not name.lower().endswith("en")
+
+
+def _bit(name: str, port: RtlPort | None) -> Output | None:
+    return Output(name, (Slice(port.name),)) if port else None
+
+
+class _Prober:
+    """Runs the experiments one after another, each with what those before have shown."""
+
+    def __init__(self, design: Design, roles: Roles, draft: Draft) -> None:
+        self.design, self.roles, self.draft = design, roles, draft
+        self.simulator = find("auto", design.language)[0]
+        wide = Span(0, GAP)
+        count, width = roles.count, roles.count.width if roles.count else None
+        direction, step, error = (
+            _bit(name, port) for name, port in (("direction", roles.direction), ("step", roles.step), ("error", roles.error))
+        )
+        signed = bool(count and count.signed)
+        size = width or 1
+        low, high = (-(1 << (size - 1)), (1 << (size - 1)) - 1) if signed else (0, (1 << size) - 1)
+        self.contract = Contract(
+            Path(f"{design.top}.yaml"),
+            design,
+            Clock(roles.clock.name, units.PS_PER_S // (RATE_MHZ * 10**6)),
+            *roles.lines,
+            Latency(wide, wide, wide, wide, wide, wide),
+            index_line=Port(roles.index.name) if roles.index else None,
+            reset=Reset(Port(roles.reset.name), True, 4) if roles.reset else None,
+            start=Start(),
+            constants=roles.constants,
+            count=Count(Output("count", (Slice(count.name),), size), signed, 1, "00", True, "wrap", low, high) if count else None,
+            direction=Direction(direction, 1, with_count=True) if direction else None,
+            step=Step("pulse", (step,)) if step else None,
+            error=Error(error, "pulse") if error else None,
+        )
+        self.reset_on = 1
+
+    def script(self, state: str = "00") -> Script:
+        return Script(self.reset_on, state).begin()
+
+    def play(self, *scripts: Script) -> list[Trace]:
+        return probe(self.contract, self.simulator, list(scripts))
+
+    def main(self, trace: Trace) -> Series:
+        """What shows a count: the count, or the steps."""
+        series = trace.count if trace.count is not None else trace.step
+        assert series is not None
+        return series
+
+    def run(self) -> None:
+        self._reset()
+        self._clock_edge()
+        self._start()
+        edges = self._sweep()
+        self._filter(edges)
+        self._latencies()
+        self._illegal()
+        if self.roles.index is not None:
+            self._index()
+        self._write()
+
+    def _reset(self) -> None:
+        """The level at which the reset port lets it count."""
+        guess = 0 if self.roles.reset and _is_low(self.roles.reset.name) else 1
+        moved: dict[int, int] = {}
+        for level in (guess, 1 - guess) if self.roles.reset else (1,):
+            self.reset_on = level
+            script = self.script().walk(12).walk(-8)
+            (trace,) = self.play(script)
+            series = self.main(trace)
+            answers = [clock for clock, _ in changes(series, 20, int(script.now)) if value_at(series, clock) is not None]
+            moved[level] = len(answers)
+            if len(answers) >= 4:  # x1 counts five times here
+                break
+        if not max(moved.values()):
+            text = "it never counts in slow motion: is an enable input held at the wrong level, or are the lines others than these?"
+            raise InputError([Problem(str(self.design.sources[0]), 1, text)])
+        self.reset_on = max(moved, key=lambda level: moved[level])
+
+    def _clock_edge(self) -> None:
+        """Edges early and late in a clock: on the falling edge the early ones are answered a clock sooner."""
+        spans = []
+        for phase in (0.2, 0.7):
+            script = self.script()
+            script.now = int(script.now) + phase
+            (trace,) = self.play(script.walk(16))
+            spans.append(self._span(self.main(trace), script))
+        early, late = spans
+        falling = early.exact and late.exact and early.min + 1 == late.min
+        if falling:
+            self.contract = replace(self.contract, clock=replace(self.contract.clock, falling=True))
+        rate = f"{{port: {self.roles.clock.name}, rate: {RATE_MHZ} MHz, edge: {'falling' if falling else 'rising'}}}"
+        self.draft.add("clock", rate, "named; the edge is measured, the rate assumed")
+
+    def _start(self) -> None:
+        """What it shows after reset, with the lines at rest in each state."""
+        scripts = [self.script(state).wait(2 * GAP) for state in A_LEADS_B]
+        traces = probe(self.contract, self.simulator, scripts, fresh=True)
+        values = [value_at(self.main(trace), int(script.now)) for script, trace in zip(scripts, traces, strict=True)]
+        moved = [
+            bool(
+                [1 for clock, _ in changes(self.main(trace), 24, int(script.now)) if value_at(self.main(trace), clock) is not None]
+            )
+            for script, trace in zip(scripts, traces, strict=True)
+        ]
+        self.start_count = values[0] or 0
+        self.rest_states = tuple(
+            state for state, value, did in zip(A_LEADS_B, values, moved, strict=True) if value == values[0] and not did
+        )
+        if values[0] is None:
+            self.draft.doubts.append("the count is X after reset: a register without reset or initial value")
+
+    def _sweep(self) -> list[tuple[int, str, str, int]]:
+        """Which states move the count, and which way."""
+        script = self.script().walk(24).wait(GAP).walk(-24)
+        (trace,) = self.play(script)
+        series = self.main(trace)
+        counted = []
+        for clock, before, after, way in script.edges:
+            moved = changes(series, clock - 1, clock + GAP - 1)
+            if moved:
+                counted.append((clock, before, after, way, moved))
+        ups = [edge for edge in counted if edge[3] > 0]
+        self.every = {24: 1, 12: 2, 6: 4}.get(len(ups), 0)
+        if not self.every or len(ups) * 2 != len(counted):
+            self.draft.doubts.append(f"of 24 states forward it counts {len(ups)}, and back {len(counted) - len(ups)}")
+            self.every = self.every or 1
+        if self.contract.count is not None and ups:
+            was, became = value_at(series, ups[2][0] - 1), ups[2][4][-1][1]
+            self.forward = "a-leads-b" if was is None or (became - was) % (1 << 32) == 1 else "b-leads-a"
+        else:
+            self.forward = "a-leads-b"
+        entered = {edge[2] for edge in counted if (edge[3] > 0) == (self.forward == "a-leads-b")}
+        left = {edge[1] for edge in counted if (edge[3] > 0) != (self.forward == "a-leads-b")}
+        self.at = next((state for state in A_LEADS_B if state in entered), "00")
+        if self.every > 1 and entered != left:
+            self.draft.doubts.append("back and forth over one edge does not give the same count: it moves at another edge backward")
+        return [edge[:4] for edge in counted]
+
+    def _filter(self, edges: list[tuple[int, str, str, int]]) -> None:
+        """Which single pulses pass, and what comes of many that do not."""
+        _, before, after, _ = next(edge for edge in edges if edge[3] > 0)
+        line = "a" if before[0] != after[0] else "b"
+
+        def pulses(width: int, many: int, gap: int) -> Script:
+            script = self.script(before) if before in self.rest_states else self.script().go_to(before).wait(GAP)
+            script.mark("begin")
+            for _ in range(many):
+                script.toggles[line].append(script.now)
+                script.toggles[line].append(script.now + width)
+                script.wait(width + gap)
+            return script.wait(GAP)
+
+        scripts = [pulses(width, 3, 2 * GAP) for width in _WIDTHS]
+        seen: dict[int, int] = {}
+        for width, script, trace in zip(_WIDTHS, scripts, self.play(*scripts), strict=True):
+            moved = changes(self.main(trace), script.marks["begin"][0], int(script.now))
+            seen[width] = len(moved)
+        passing = [width for width in _WIDTHS if all(seen[w] >= 6 for w in _WIDTHS if w >= width)]  # 3 there, 3 back
+        never = [width for width in _WIDTHS if all(seen[w] == 0 for w in _WIDTHS if w <= width)]
+        self.passes, self.rejects = (min(passing) if passing else 1), (max(never) if never else 0)
+        self.bursts = False
+        if self.rejects:
+            (trace,) = self.play(script := pulses(self.rejects, 12, 1))
+            self.bursts = bool(changes(self.main(trace), script.marks["begin"][0], int(script.now)))
+
+    def _latencies(self) -> None:
+        """How long each output takes, over many edges at all phases."""
+        rng = random.Random(1)  # noqa: S311  # phases, no secrets
+        script = self.script()
+        way = 1
+        for _ in range(240):
+            if rng.random() < 0.2:  # a reversal now and then
+                way = -way
+            script.step(way, GAP + rng.random())
+        (trace,) = self.play(script)
+        main = self.main(trace)
+        self.latency = {"count": self._span(main, script)}
+        if trace.step is not None and trace.count is not None:
+            self.latency["step"] = self._span(trace.step, script)
+        sign = 1 if self.forward == "a-leads-b" else -1
+        if trace.direction is not None:
+            self._direction(trace.direction, main, script, sign)
+        if trace.step is not None:
+            self.step_idle = value_at(trace.step, script.edges[0][0] - 1) or 0
+            moves = changes(trace.step, 0, int(script.now))
+            lasts = [then - now for (now, level), (then, _) in itertools.pairwise(moves) if level != self.step_idle]
+            self.step_kind = "pulse" if lasts and max(lasts) == 1 else "toggle" if lasts and min(lasts) > GAP // 2 else "level"
+
+    def _direction(self, direction: Series, main: Series, script: Script, sign: int) -> None:
+        """The level going forward, in which clock beside the count's, and whether it stays."""
+        counted = [
+            (answers[0][0], way * sign)
+            for clock, _, _, way in script.edges
+            if (answers := changes(main, clock - 1, clock + GAP - 1))
+        ]
+        self.direction_offset = None
+        for offset in sorted(range(-8, 9), key=abs):
+            told = {way: {value_at(direction, clock + offset) for clock, its in counted if its == way} for way in (1, -1)}
+            if all(len(levels) == 1 for levels in told.values()) and told[1] != told[-1]:
+                self.direction_offset, self.forward_level = offset, next(iter(told[1])) or 0
+                break
+        if self.direction_offset is None:
+            self.draft.doubts.append("the direction is not the same for every count of one way, near the clock in which it moves")
+            self.direction_offset, self.forward_level = 0, 1
+        reversals = sum(1 for (_, one), (_, other) in itertools.pairwise(counted) if one != other)
+        span = self._span(direction, script)
+        still = len(direction.period) <= reversals + 4
+        self.always = self.every == 1 and still and span.max - span.min <= 1 and span.max < GAP // 2
+        at_count = self.latency["count"]
+        self.latency["direction"] = (
+            span if self.always else Span(at_count.min + self.direction_offset, at_count.max + self.direction_offset)
+        )
+
+    @staticmethod
+    def _span(series: Series, script: Script) -> Span:
+        found = []
+        for clock, _, _, _ in script.edges:
+            answers = changes(series, clock - 1, clock + GAP - 1)
+            if answers:
+                found.append(answers[0][0] - clock)
+        return Span(min(found), max(found)) if found else Span(0, GAP)
+
+    def _illegal(self) -> None:
+        """What both lines at once do to the count and the error output."""
+        script = self.script()
+        for state in A_LEADS_B:
+            script.go_to(state).wait(2 * GAP)
+            script.mark("both")
+            script.toggle("a", "b")
+            script.wait(3 * GAP)
+        (trace,) = self.play(script)
+        marks = script.marks["both"]
+        moved = [changes(self.main(trace), clock - 1, clock + 2 * GAP) for clock in marks]
+        self.illegal_holds = not any(moved)
+        if trace.error is None:
+            return
+        self.error_idle = value_at(trace.error, marks[0] - 1) or 0
+        answers = [changes(trace.error, clock - 1, clock + 2 * GAP) for clock in marks]
+        told = [one for one in answers if one]
+        if not told:
+            self.draft.doubts.append("the error output says nothing of any illegal transition")
+        delays = [one[0][0] - clock for one, clock in zip(answers, marks, strict=True) if one]
+        self.latency["error"] = Span(min(delays), max(delays)) if delays else self.latency["count"]
+        lasts = [one[1][0] - one[0][0] for one in told if len(one) > 1]
+        self.error_kind = "pulse" if lasts and max(lasts) == 1 else "sticky"
+        if self.error_kind == "pulse" and len(told) < len(marks):
+            self.draft.doubts.append(f"only {len(told)} of {len(marks)} kinds of illegal transition are reported")
+
+    def _index(self) -> None:
+        """In which states the index sets the count, and to what."""
+        low = self.roles.index is not None and _is_low(self.roles.index.name)
+        scripts = []
+        for n, state in enumerate(A_LEADS_B):
+            script = self.script()
+            script.firsts["index"] = int(low)
+            script.walk(24 + 4 * n).go_to(state).wait(GAP)
+            script.mark("on")
+            script.toggle("index")
+            script.wait(2 * GAP)
+            script.mark("off")
+            script.toggle("index")
+            scripts.append(script.wait(2 * GAP))
+        self.index_low, hits, delays, values, self.index_edge = low, [], [], [], False
+        for state, script, trace in zip(A_LEADS_B, scripts, self.play(*scripts), strict=True):
+            if trace.count is None:
+                continue
+            on = script.marks["on"][0]
+            answers = changes(trace.count, on - 1, on + 2 * GAP)
+            if answers:
+                hits.append(state)
+                delays.append(answers[0][0] - on)
+                values.append(answers[-1][1])
+        self.index_states, self.index_value = hits, values[0] if values and len(set(values)) == 1 else None
+        if delays:
+            self.latency["index"] = Span(min(delays), max(delays))
+            self._index_sense(low=low)
+
+    def _index_sense(self, *, low: bool) -> None:
+        """Whether the index holds the count while it is active: moved on inside, or released from reset with it on."""
+        inside = next((s for n, s in enumerate(A_LEADS_B) if {s, A_LEADS_B[(n + 1) % 4]} <= set(self.index_states)), None)
+        scripts = []
+        if inside is not None:
+            script = self.script()
+            script.firsts["index"] = int(low)
+            script.walk(20).go_to(inside).wait(GAP)
+            script.toggle("index")
+            script.wait(2 * GAP)
+            script.mark("moved")
+            # All round if it acts everywhere, else to and fro.
+            scripts.append(script.walk(4) if len(self.index_states) == len(A_LEADS_B) else script.walk(1).walk(-1))
+        if self.start_count != self.index_value:
+            script = self.script(self.index_states[0])
+            script.firsts["index"] = int(not low)
+            script.mark("released")
+            scripts.append(script.wait(GAP))
+        outside = next((n for n, s in enumerate(A_LEADS_B) if s not in self.index_states), None)
+        self.step_counts = False
+        if outside is not None:
+            # Moved into the index, both ways: a step that is counted shows as one off.
+            for way in (1, -1):
+                script = self.script()
+                script.firsts["index"] = int(low)
+                script.walk(20).go_to(A_LEADS_B[outside]).wait(GAP)
+                script.toggle("index")
+                script.wait(GAP)
+                while script.state not in self.index_states:
+                    script.step(way)
+                script.mark("entered")
+                scripts.append(script.wait(GAP))
+        for script, trace in zip(scripts, self.play(*scripts) if scripts else [], strict=True):
+            assert trace.count is not None
+            if "entered" in script.marks:
+                self.step_counts |= value_at(trace.count, int(script.now)) != self.index_value
+            elif "moved" in script.marks:
+                self.index_edge |= bool(changes(trace.count, script.marks["moved"][0], int(script.now)))
+            else:
+                self.index_edge |= value_at(trace.count, int(script.now)) != self.index_value
+
+    # --- the file ---------------------------------------------------------------------------------------------------
+
+    def _write(self) -> None:
+        add, roles = self.draft.add, self.roles
+        if roles.reset:
+            active = "high" if self.reset_on else "low"
+            add(
+                "reset",
+                f"{{port: {roles.reset.name}, active: {active}, kind: async, clocks: 20}}",
+                "measured; kind and clocks are assumed",
+            )
+        else:
+            add("reset", "none", "named")
+        settle = max(8, self.passes + 2 * self.latency["count"].max)
+        states = "any" if len(self.rest_states) == len(A_LEADS_B) else f"[{', '.join(f'{state!r}' for state in self.rest_states)}]"
+        count = f"count: {self.start_count}, " if roles.count else ""
+        add("start", f"{{{count}rest_states: {states}, settle: {settle}}}", "measured; settle is assumed")
+        a, b = (_line_text(line) for line in roles.lines)
+        index = ""
+        if roles.index:
+            index = f", index: {{port: {roles.index.name}, active: low}}" if self.index_low else f", index: {roles.index.name}"
+        add("lines", f"{{a: {a}, b: {b}{index}}}", "named")
+        if roles.constants:
+            held = [
+                f"{one.port}: {one.value}" if one.width == 1 else f"{one.port}: {{value: {one.value}, width: {one.width}}}"
+                for one in roles.constants
+            ]
+            add("inputs", f"{{{', '.join(held)}}}", "assumed: held at these levels")
+        self._write_outputs()
+        if not self.illegal_holds:
+            add("illegal", "{count: any}", "measured: the count moves")
+        if roles.index and roles.count:
+            self._write_index()
+        if self.rejects or self.passes > 1:
+            bursts = ", bursts: open" if self.bursts else ""
+            add("filter", f"{{rejects: {self.rejects}, passes: {self.passes}{bursts}}}", "measured, to 128 clocks")
+        add(
+            "latency",
+            f"{{{', '.join(f'{name}: {_span_text(span)}' for name, span in self._told_latencies().items())}}}",
+            "measured",
+        )
+
+    def _told_latencies(self) -> dict[str, Span]:
+        main = "count" if self.roles.count else "step"
+        told = {main: self.latency["count"]}
+        if self.roles.direction and self.latency["direction"] != told[main]:
+            told["direction"] = self.latency["direction"]
+        if self.roles.count and self.roles.step and self.latency["step"] != told[main]:
+            told["step"] = self.latency["step"]
+        for name in ("error", "index"):
+            if name in self.latency and self.latency[name] != told[main]:
+                told[name] = self.latency[name]
+        return told
+
+    def _write_outputs(self) -> None:
+        add, roles = self.draft.add, self.roles
+        if roles.count:
+            signed = "true" if roles.count.signed else "false"
+            at = f', at: "{self.at}"' if self.every > 1 else ""
+            add(
+                "count",
+                f"{{port: {roles.count.name}, width: {roles.count.width}, signed: {signed}, resolution: x{4 // self.every}{at},"
+                f" forward: {self.forward}{self._overflow()}}}",
+                "measured",
+            )
+        if roles.direction:
+            valid = "always" if self.always else "with-count"
+            add("direction", f"{{port: {roles.direction.name}, forward: {self.forward_level}, valid: {valid}}}", "measured")
+        if roles.step:
+            active = ", active: low" if self.step_idle and self.step_kind != "toggle" else ""
+            add("step", f"{{port: {roles.step.name}, kind: {self.step_kind}{active}}}", "measured")
+        if roles.error:
+            active = ", active: low" if self.error_idle else ""
+            add("error", f"{{port: {roles.error.name}, kind: {self.error_kind}{active}}}", "measured")
+
+    def _overflow(self) -> str:
+        """What the count does at its ends, if they can be reached in reasonable time."""
+        assert self.contract.count is not None
+        count = self.contract.count
+        way = 1 if self.forward == "a-leads-b" else -1
+        gap = max(2 * self.passes, self.latency["count"].max) + 4
+        far = (count.size + 4) * self.every
+        if far * gap > _FARTHEST_CLOCKS:
+            self.draft.doubts.append("the count was not driven to its ends; that it wraps there is assumed")
+            return ""
+        up, down = self.script().walk(way * far, gap).wait(GAP), self.script().walk(-way * far, gap).wait(GAP)
+        rising, falling = (
+            [self.start_count, *(value for _, value in changes(self.main(trace), 24, int(script.now)))]
+            for script, trace in zip((up, down), self.play(up, down), strict=True)
+        )
+        over = next(((one, other) for one, other in itertools.pairwise(rising) if other < one), None)
+        if over is None:
+            low, high = min(falling), max(rising)
+            limits = f", lowest: {low}, highest: {high}" if (low, high) != (count.lowest, count.highest) else ""
+            return f", overflow: hold{limits}"
+        if over == (count.highest, count.lowest):
+            return ""
+        if over[1] == 0:
+            return f", overflow: modulo, modulo: {over[0] + 1}"
+        self.draft.doubts.append(f"the count goes from {over[0]} to {over[1]}, which no kind of overflow does")
+        return ""
+
+    def _write_index(self) -> None:
+        states = self.index_states
+        if not states:
+            self.draft.doubts.append("the index line does nothing to the count in any state")
+            return
+        when = {name: {state[place] for state in states} for place, name in enumerate(("a", "b"))}
+        gate = ", ".join(f"{name}: {next(iter(levels))}" for name, levels in when.items() if len(levels) == 1)
+        expected = [
+            s for s in A_LEADS_B if all(len(levels) > 1 or s[place] in levels for place, levels in enumerate(when.values()))
+        ]
+        if sorted(expected) != sorted(states) or self.index_value is None:
+            self.draft.doubts.append(f"the index acts in the states {', '.join(states)}, which no levels of A and B tell")
+        action = "zero" if not self.index_value else f"load, value: {self.index_value}"
+        gated = f", when: {{{gate}}}" if gate else ""
+        sense = ", sense: edge" if self.index_edge or self.step_counts else ""
+        sense += ", step_together: counted" if self.step_counts else ""
+        how = "measured" if sense else "measured; where nothing speaks against it, it is taken to act as a level"
+        self.draft.add("index", f"{{action: {action}{gated}{sense}}}", how)
+
+
+def _line_text(line: Port) -> str:
+    name = line.name if line.bit is None else f'"{line.name}[{line.bit}]"'
+    return f"{{port: {name}, active: low}}" if line.active_low else name
+
+
+def _span_text(span: Span) -> str:
+    return str(span.min) if span.exact else f"[{span.min}, {span.max}]"

@@ -1,0 +1,96 @@
+"""``tbkit describe``: the file it writes for a right decoder passes the built-in regression."""
+
+from __future__ import annotations
+
+import re
+from collections import Counter
+from pathlib import Path
+
+import pytest
+from harness import decoder_files, play, told, whole
+from mutants import DECODERS, EXAMPLES
+
+from tbkit.cli import main
+from tbkit.contract_file import read_contract
+from tbkit.simulators import Simulator
+
+#: Decoders of which slow clean motion and single pulses do not tell enough, or that it has no words for yet.
+OUT_OF_REACH = {
+    "dead_time": "a dead time looks like no filter to single pulses",
+    "no_clock": "it needs a clock",
+    "packed_lines": "the index is a bit of the vector of the lines",
+    "status_word": "the count is made of bits of two ports",
+    "ticked": "it looks at the lines now and then, at times of its own",
+    "ticked_filter": "it looks at the lines now and then, at times of its own",
+    "up_down_pulse": "steps on one output each way",
+    "up_down_toggle": "steps on one output each way",
+    "zero_at_power_up": "it is X for ever on a four-state simulator",
+}
+#: What the names of some ports do not tell.
+ROLES = {
+    "lid_position": ["a=phase_1", "b=phase_2"],
+    "lookup_table": ["clock=strobe", "reset=init", "count=place", "direction=way", "error=alarm"],
+}
+FILES = [*decoder_files("verilog"), EXAMPLES / "spindle.yaml", EXAMPLES / "traverse.yaml", EXAMPLES / "knob.yaml"]
+
+
+def described(stem: str, tmp_path: Path) -> Path:
+    """The decoder file that is written for a decoder, whose own file serves for its sources and top module only."""
+    own = read_contract((DECODERS if (DECODERS / f"{stem}.yaml").exists() else EXAMPLES) / f"{stem}.yaml")
+    file = tmp_path / f"{stem}.yaml"
+    roles = [word for role in ROLES.get(stem, ()) for word in ("--role", role)]
+    assert main(["describe", *map(str, own.design.sources), "--top", own.design.top, *roles, "-o", str(file)]) == 0
+    return file
+
+
+@pytest.mark.simulator("icarus")
+@pytest.mark.parametrize("stem", [file.stem for file in FILES if file.stem not in OUT_OF_REACH])
+def test_described_decoders_pass(stem: str, simulator: Simulator, tmp_path: Path, out: Path) -> None:
+    file = described(stem, tmp_path)
+    text = file.read_text("utf-8")
+    kinds = Counter(re.findall(r"^[a-z_]+: .*  # (measured|named|assumed)", text, re.MULTILINE))
+    # Each line of the file says how it is known, and most of what it says is measured.
+    assert kinds.total() == len([line for line in text.splitlines() if re.match(r"[a-z_]+:", line)]) - 1
+    assert kinds["measured"] >= 3
+    contract = read_contract(file)
+    results = play(contract, whole(contract), simulator, out)
+    assert results.verdict == "pass", text + told(results)
+
+
+RTL = """\
+module axis (input run, input first, input second, output reg [7:0] pos = 0); endmodule
+module other (input x); endmodule
+"""
+NAMES = "run, first, second, pos"
+UNTOLD = (
+    f"d.v:1: which port is the clock cannot be told from the names {NAMES}; say it with `--role clock=PORT`\n"
+    f"d.v:1: which port is A and which B cannot be told from the names {NAMES};"
+    " say it with `--role a=PORT --role b=PORT`\n"
+)
+NO_SUCH = (
+    "--role: there is no role 'clok'; there are clock, reset, a, b, index, count, direction, step, error (did you mean 'clock'?)\n"
+    f"--role: 'axis' has no port 'frist'; its ports are {NAMES} (did you mean 'first'?)\n"
+)
+STILL = "d.v:1: it never counts in slow motion: is an enable input held at the wrong level, or are the lines others than these?\n"
+
+
+@pytest.mark.simulator("icarus")
+@pytest.mark.usefixtures("simulator")
+@pytest.mark.parametrize(
+    ("words", "message"),
+    [
+        ("none.v", "none.v: there is no such file\n"),
+        ("d.v --top axes", "d.v:1: there is no module 'axes' in the sources; there are axis, other\n"),
+        ("d.v", "d.v:1: name the top module with --top; modules at the top: axis, other\n"),
+        ("d.v --top axis", UNTOLD),
+        ("d.v --top axis --role clok=run --role a=frist", NO_SUCH),
+        ("d.v --top axis --role clock=run --role a=first --role b=second", STILL),
+    ],
+)
+def test_refusals(
+    words: str, message: str, tmp_path: Path, monkeypatch: pytest.MonkeyPatch, capsys: pytest.CaptureFixture[str]
+) -> None:
+    monkeypatch.chdir(tmp_path)
+    Path("d.v").write_text(RTL, "utf-8")
+    assert main(["describe", *words.split()]) == 2
+    assert capsys.readouterr().err.replace(f"{tmp_path}/", "") == message
