@@ -63,13 +63,13 @@ module other (input x); endmodule
 """
 NAMES = "run, first, second, pos"
 UNTOLD = (
-    f"d.v:1: which port is the clock cannot be told from the names {NAMES}; say it with `--role clock=PORT`\n"
     f"d.v:1: which port is A and which B cannot be told from the names {NAMES};"
     " say it with `--role a=PORT --role b=PORT`\n"
+    f"d.v:1: which port is the clock cannot be told from the names {NAMES}; say it with `--role clock=PORT`\n"
 )
 NO_SUCH = (
-    "--role: there is no role 'clok'; there are clock, reset, a, b, index, count, direction, step, error (did you mean 'clock'?)\n"
     f"--role: 'axis' has no port 'frist'; its ports are {NAMES} (did you mean 'first'?)\n"
+    "--role: there is no role 'clok'; there are clock, reset, a, b, index, count, direction, step, error (did you mean 'clock'?)\n"
 )
 STILL = "d.v:1: it never counts in slow motion: is an enable input held at the wrong level, or are the lines others than these?\n"
 
