@@ -39,7 +39,8 @@ unit: $(READY)
 	$(BIN)/python -m pytest tests/unit $(PYTEST_ARGS)
 
 soak: $(READY)
-	TBKIT_SOAK=1 $(BIN)/python -m pytest -n auto tests/unit/test_oracles_bruteforce.py tests/simulator/test_right_decoders.py $(PYTEST_ARGS)
+	TBKIT_SOAK=1 $(BIN)/python -m pytest -n auto tests/unit/test_oracles_bruteforce.py tests/unit/test_inputs.py \
+	  tests/simulator/test_right_decoders.py tests/simulator/test_mutants.py tests/simulator/test_describe.py $(PYTEST_ARGS)
 
 table: $(READY)
 	$(BIN)/python tests/simulator/table.py

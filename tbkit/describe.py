@@ -10,6 +10,7 @@ import itertools
 import os
 import random
 import re
+import tempfile
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from pathlib import Path
@@ -108,7 +109,8 @@ def describe(sources: Sequence[Path], top: str | None, home: Path, given: Mappin
     draft = Draft()
     names = ", ".join(_relative(path, home) for path in files)
     draft.add("decoder", f"{{top: {design.top}, sources: [{names}]}}", "named")
-    _Prober(design, roles, draft).run()
+    with tempfile.TemporaryDirectory(prefix="tbkit-describe-") as folder:
+        _Prober(design, roles, draft, Path(folder)).run()
     return draft.text(f"What tbkit found out about {design.top}; read it, mend it, then run tbkit verify on it.")
 
 
@@ -201,7 +203,8 @@ def _roles(rtl: Rtl, file: Path, given: Mapping[str, str]) -> Roles:
 def _line(text: str) -> Port:
     """``enc_a`` or ``ab[1]``."""
     name, _, bit = text.rstrip("]").partition("[")
-    return Port(name, int(bit) if bit.isdecimal() else None, _is_low(name))
+    # The end of `enc_b` names the line; only an n tells that it is low.
+    return Port(name, int(bit) if bit.isdecimal() else None, re.search(r"_ni?$", name.lower()) is not None)
 
 
 def _is_low(name: str) -> bool:
@@ -215,8 +218,8 @@ def _bit(name: str, port: RtlPort | None) -> Output | None:
 class _Prober:
     """Runs the experiments one after another, each with what those before have shown."""
 
-    def __init__(self, design: Design, roles: Roles, draft: Draft) -> None:
-        self.design, self.roles, self.draft = design, roles, draft
+    def __init__(self, design: Design, roles: Roles, draft: Draft, folder: Path) -> None:
+        self.design, self.roles, self.draft, self.folder = design, roles, draft, folder
         self.simulator = find("auto", design.language)[0]
         wide = Span(0, GAP)
         count, width = roles.count, roles.count.width if roles.count else None
@@ -247,7 +250,7 @@ class _Prober:
         return Script(self.reset_on, state).begin()
 
     def play(self, *scripts: Script) -> list[Trace]:
-        return probe(self.contract, self.simulator, list(scripts))
+        return probe(self.contract, self.simulator, self.folder, list(scripts))
 
     def main(self, trace: Trace) -> Series:
         """What shows a count: the count, or the steps."""
@@ -303,7 +306,7 @@ class _Prober:
     def _start(self) -> None:
         """What it shows after reset, with the lines at rest in each state."""
         scripts = [self.script(state).wait(2 * GAP) for state in A_LEADS_B]
-        traces = probe(self.contract, self.simulator, scripts, fresh=True)
+        traces = probe(self.contract, self.simulator, self.folder, scripts, fresh=True)
         values = [value_at(self.main(trace), int(script.now)) for script, trace in zip(scripts, traces, strict=True)]
         moved = [
             bool(

@@ -97,23 +97,24 @@ class Script:
         )  # fmt: skip
 
 
-def probe(contract: Contract, simulator: Simulator, scripts: list[Script], *, fresh: bool = False) -> list[Trace]:
+def probe(contract: Contract, simulator: Simulator, folder: Path, scripts: list[Script], *, fresh: bool = False) -> list[Trace]:
     """Play the scripts; returns what the outputs did. ``fresh``: each comes from power-up, where there is no reset.
+
+    ``folder`` keeps the bench, which is built once for all experiments.
 
     Raises:
         SimulatorError: the decoder does not build, or a script was not played to its end.
     """
-    folder = Path(tempfile.mkdtemp(prefix="tbkit-describe-"))
-    try:
-        ready = bench.build(contract, simulator, folder)
-        period_ps = contract.clock.period_ps
-        stimuli = [script.stimulus(number, period_ps, fresh=fresh) for number, script in enumerate(scripts)]
-        played = bench.play(ready, contract, stimuli, folder / "run", lambda _: None)
-        if played.failure is not None:
-            raise SimulatorError(str(played.failure))
-        return [read_trace(played.traces[n], contract, period_ps, stimuli[n].periods) for n in range(len(stimuli))]
-    finally:
-        shutil.rmtree(folder, ignore_errors=True)
+    ready = bench.build(contract, simulator, folder)
+    period_ps = contract.clock.period_ps
+    stimuli = [script.stimulus(number, period_ps, fresh=fresh) for number, script in enumerate(scripts)]
+    run = Path(tempfile.mkdtemp(prefix="run-", dir=folder))
+    played = bench.play(ready, contract, stimuli, run, lambda _: None)
+    if played.failure is not None:
+        raise SimulatorError(str(played.failure))
+    traces = [read_trace(played.traces[n], contract, period_ps, stimuli[n].periods) for n in range(len(stimuli))]
+    shutil.rmtree(run)
+    return traces
 
 
 def value_at(series: Series, clock: int) -> int | None:

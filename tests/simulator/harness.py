@@ -20,6 +20,8 @@ from tbkit.verify import Plan, ProfileResult, Results, plan, verify
 
 #: Names of simulators that must be here: without them tests fail instead of being skipped.
 REQUIRE = "TBKIT_REQUIRE"
+#: With ``TBKIT_SOAK=1`` nothing is left out for the time it takes.
+SOAK = os.environ.get("TBKIT_SOAK") == "1"
 #: A profile with more edges than this is long.
 LONG_EDGES = 5000
 

@@ -6,11 +6,14 @@ from collections import Counter
 from pathlib import Path
 
 import pytest
-from harness import kinds_found, mutated, play, short_part, told, whole
+from harness import SOAK, kinds_found, mutated, play, short_part, told, whole
 from mutants import MUTANTS, TWINS, UNSEEN, Mutant
 
 from tbkit.findings import KINDS
 from tbkit.simulators import Simulator, find
+
+#: With ``TBKIT_SOAK=1`` all of these, else every third.
+ON_VERILATOR = [mutant for mutant in MUTANTS if mutant.verilator]
 
 
 def _check(mutant: Mutant, simulator: Simulator, tmp_path: Path, out: Path) -> None:
@@ -28,7 +31,7 @@ def test_icarus(mutant: Mutant, simulator: Simulator, tmp_path: Path, out: Path)
 
 
 @pytest.mark.simulator("verilator")
-@pytest.mark.parametrize("mutant", [mutant for mutant in MUTANTS if mutant.verilator], ids=lambda mutant: mutant.name)
+@pytest.mark.parametrize("mutant", ON_VERILATOR if SOAK else ON_VERILATOR[::3], ids=lambda mutant: mutant.name)
 def test_verilator(mutant: Mutant, simulator: Simulator, tmp_path: Path, out: Path) -> None:
     _check(mutant, simulator, tmp_path, out)
 
