@@ -200,7 +200,7 @@ class Cutter:
         )
         sure = raw[1] - raw[0] == passed[1] - passed[0] and not events.open[first:event].any()
         sure = sure and (contract.illegal_holds or not events.illegal[first:event].any())
-        sure = sure and (contract.index is None or not (events.sets | events.enters_index)[first:event].any())
+        sure = sure and (contract.index is None or not (events.sets | events.enters_index | events.leaves_index)[first:event].any())
         if count is None or not sure or len(contract.start.rest_states) < 4 or last - first > MOST_MOMENTS:
             return None
         start = into_range(count, contract.start.count)
