@@ -26,13 +26,21 @@ _INPUTS = ("clock", "reset", "lines", "inputs")
 
 @dataclass(frozen=True, slots=True)
 class RtlPort:
-    """A port as it is declared; ``width`` is None where it cannot be told, or is that of no vector."""
+    """A port as it is declared.
+
+    Attributes:
+        width: None where it cannot be told.
+        bounds: the numbers of the leftmost and the rightmost bit, of a plain vector.
+        optional: an input with a value of its own where it is left open.
+    """
 
     name: str
     is_output: bool
     width: int | None
     signed: bool
     place: str
+    bounds: tuple[int, int] | None = None
+    optional: bool = False
 
 
 @dataclass(frozen=True, slots=True)
@@ -67,9 +75,16 @@ def _compile(design: Design) -> tuple[Compilation, pyslang.SourceManager]:
     options = pyslang.Bag([reading, building])
     manager = pyslang.SourceManager()
     compilation = Compilation(options)
-    for source in design.sources:
-        compilation.addSyntaxTree(SyntaxTree.fromFile(str(source), manager, options))
+    # One unit, as the simulators take it: a macro of one file holds in those after it.
+    compilation.addSyntaxTree(SyntaxTree.fromFiles([str(source) for source in design.sources], manager, options))
     return compilation, manager
+
+
+def _has_errors(compilation: Compilation, manager: pyslang.SourceManager) -> bool:
+    """Whether the text cannot be understood: what would be read from the rest of it may be wrong."""
+    severity = pyslang.DiagnosticEngine(manager).getSeverity
+    grave = (pyslang.DiagnosticSeverity.Error, pyslang.DiagnosticSeverity.Fatal)
+    return any(severity(one.code, one.location) in grave for one in compilation.getParseDiagnostics())
 
 
 def _read_verilog(design: Design) -> Rtl | tuple[str, ...] | None:
@@ -77,6 +92,8 @@ def _read_verilog(design: Design) -> Rtl | tuple[str, ...] | None:
         compilation, manager = _compile(design)
         tops: list[InstanceSymbol] = list(compilation.getRoot().topInstances)
     except RuntimeError:
+        return None
+    if _has_errors(compilation, manager):
         return None
     names = tuple(one.name for one in compilation.getDefinitions())
     if design.top not in names:
@@ -93,7 +110,11 @@ def _read_verilog(design: Design) -> Rtl | tuple[str, ...] | None:
     for port in top.body.portList:
         kind = port.type
         signed = bool(kind.isIntegral and kind.isSigned)
-        ports.append(RtlPort(port.name, port.direction == ArgumentDirection.Out, kind.bitWidth or None, signed, place(port)))
+        vector = kind.canonicalType
+        plain = bool(vector.isPackedArray and vector.elementType.bitWidth == 1)
+        bounds = (vector.range.left, vector.range.right) if plain else None
+        output, optional = port.direction == ArgumentDirection.Out, port.initializer is not None
+        ports.append(RtlPort(port.name, output, kind.bitWidth or None, signed, place(port), bounds, optional))
     parameters = tuple(one.name for one in top.body.parameters if not getattr(one, "isLocalParam", False))
     return Rtl(design.top, place(top.definition), tuple(ports), parameters)
 
@@ -108,10 +129,10 @@ def _read_vhdl(design: Design) -> Rtl | None:
     ports = []
     for one in known.values():
         kind = one.type
-        vector = kind.mark in VECTORS and kind.left is not None and kind.right is not None
-        width = 1 if kind.mark in BITS else abs((kind.left or 0) - (kind.right or 0)) + 1 if vector else None
+        bounds = None if kind.mark not in VECTORS or kind.left is None or kind.right is None else (kind.left, kind.right)
+        width = 1 if kind.mark in BITS else abs(bounds[0] - bounds[1]) + 1 if bounds else None
         place = f"{Path(one.file).name}:{one.line}"
-        ports.append(RtlPort(one.name, one.mode in ("out", "buffer"), width, kind.mark == "signed", place))
+        ports.append(RtlPort(one.name, one.mode in ("out", "buffer"), width, kind.mark == "signed", place, bounds, one.optional))
     first = ports[0].place if ports else ""
     return Rtl(design.top, first, tuple(ports), tuple(name for name, _ in design.parameters))
 
@@ -125,7 +146,8 @@ def check_against_rtl(contract: Contract) -> list[Problem]:
         text = f"there is no module {contract.design.top!r} in the sources; there are {', '.join(rtl)}"
         return [_problem(contract, "decoder", text + nearest(contract.design.top, rtl))]
     found = [_misfit(contract, rtl, *use) for use in _uses(contract)]
-    problems = [problem for problem in found if problem is not None]
+    # Two bits of one port may have the same thing wrong.
+    problems = list(dict.fromkeys(problem for problem in found if problem is not None))
     for name, _ in contract.design.parameters:
         if name not in rtl.parameters:
             text = f"{rtl.top!r} ({rtl.place}) has no parameter {name!r}; it has {', '.join(rtl.parameters) or 'none'}"
@@ -133,7 +155,7 @@ def check_against_rtl(contract: Contract) -> list[Problem]:
     if not problems:
         used = {_fold(contract, name) for _, name, *_ in _uses(contract)}
         for port in rtl.ports:
-            if not port.is_output and _fold(contract, port.name) not in used:
+            if not port.is_output and not port.optional and _fold(contract, port.name) not in used:
                 text = f"the input {port.name!r} ({port.place}) is not named; hold it at a value: `inputs: {{{port.name}: 0}}`"
                 problems.append(_problem(contract, "inputs", text))
     return problems
@@ -170,8 +192,25 @@ def _misfit(contract: Contract, rtl: Rtl, key: str, name: str, high: int | None,
         return _problem(contract, key, f"the port {base!r} ({port.place}) is {kinds[0]}, and {kinds[1]} is needed here")
     if port.width is None or "." in name:
         return None
-    if high is not None and high >= port.width:
-        return _problem(contract, key, f"the port {base!r} ({port.place}) has {port.width} bits, and bit {high} is none of them")
-    if high is None and width is not None and width != port.width:
+    if high is not None:
+        text = _bit_misfit(port, high, driven=key in _INPUTS and contract.design.language != "vhdl")
+        return _problem(contract, key, text) if text else None
+    if width is not None and width != port.width:
         return _problem(contract, key, f"the port {base!r} ({port.place}) has {port.width} bits, and {width} are declared here")
     return None
+
+
+def _bit_misfit(port: RtlPort, bit: int, *, driven: bool) -> str:
+    """What is wrong with a bit of a port; ``driven``: by the bench, which numbers the bits of a vector from 0 at its right."""
+    left, right = port.bounds or ((port.width or 1) - 1, 0)
+    shown = f"the port {port.name!r} ({port.place}) "
+    if driven and port.bounds and (right != 0 or left < 0):
+        return (
+            f"{shown}is declared [{left}:{right}], and single bits are driven of vectors declared [N:0] only; declare it"
+            f" [{abs(left - right)}:0], or put a module around the decoder that does"
+        )
+    if min(left, right) <= bit <= max(left, right):
+        return ""
+    if port.bounds and right != 0:
+        return f"{shown}is declared [{left}:{right}], and bit {bit} is none of them"
+    return f"{shown}has {port.width} bits, and bit {bit} is none of them"

@@ -43,11 +43,14 @@ class VhdlType:
 
 @dataclass(frozen=True, slots=True)
 class VhdlPort:
+    """A port; ``optional``: it has a value of its own where it is left open."""
+
     name: str
     mode: str
     type: VhdlType
     file: str
     line: int
+    optional: bool = False
 
 
 def standard_option(design: Design) -> str:
@@ -105,7 +108,8 @@ class _Reader:
             name = node.get("identifier", "")
             if subtype is not None:
                 kind = self._type(subtype)
-                found[name] = VhdlPort(name, node.get("mode", ""), kind, node.get("file", ""), int(node.get("line", "0")))
+                optional = node.find("default_value") is not None
+                found[name] = VhdlPort(name, node.get("mode", ""), kind, node.get("file", ""), int(node.get("line", "0")), optional)
         return found
 
     def _type(self, node: ET.Element) -> VhdlType:

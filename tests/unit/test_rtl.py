@@ -123,5 +123,74 @@ def test_parameters_count(folder: Path) -> None:
     assert said(folder, **wide, count="{port: pos, width: 12, signed: true}") == []
 
 
-def test_unreadable_rtl_is_left_to_the_simulator(folder: Path) -> None:
-    assert said(folder, rtl="modul axis (input clk);") == []
+@pytest.mark.parametrize(
+    "rtl",
+    [
+        pytest.param("modul axis (input clk);", id="no-module"),
+        pytest.param(RTL.replace("en,\n", "en\n"), id="comma-missing"),
+        pytest.param(RTL.replace("endmodule", "always @(posedge clk pos <= ;\nendmodule", 1), id="broken-inside"),
+        pytest.param('`include "nowhere.vh"\n' + RTL.replace("[TOP:0]", "[`TOP:0]"), id="include-missing"),
+    ],
+)
+def test_unreadable_rtl_is_left_to_the_simulator(folder: Path, rtl: str) -> None:
+    assert rtl != RTL
+    assert said(folder, rtl=rtl, clock="{port: clock, rate: 50 MHz}") == []
+
+
+def test_macros_of_an_earlier_file_hold(folder: Path) -> None:
+    """The simulators compile the sources one after another as one text."""
+    (folder / "sizes.v").write_text("`define TOP 8\n")
+    sources = {"decoder": "{top: axis, sources: [sizes.v, d.v]}"}
+    rtl = RTL.replace("[TOP:0]", "[`TOP:0]")
+    assert said(folder, rtl=rtl, **sources) == ["x.yaml:7: count: the port 'pos' (d.v:10) has 9 bits, and 8 are declared here"]
+    assert said(folder, rtl=rtl, **sources, count="{port: pos, width: 9, signed: true}") == []
+
+
+@pytest.mark.parametrize("bounds", ["0:1", "2:1"])
+def test_bits_are_driven_of_plain_vectors_only(folder: Path, bounds: str) -> None:
+    """The bench numbers the bits it drives from the right: A and B would be swapped, or go to other bits, unseen."""
+    expected = (
+        f"x.yaml:5: lines: the port 'ab' (d.v:7) is declared [{bounds}], and single bits are driven of vectors declared [N:0] only;"
+        " declare it [1:0], or put a module around the decoder that does"
+    )
+    assert said(folder, rtl=RTL.replace("[1:0]", f"[{bounds}]")) == [expected]
+
+
+def test_bits_are_read_by_their_own_numbers(folder: Path) -> None:
+    rtl = RTL.replace("[3:0]", "[1:4]")
+    assert said(folder, rtl=rtl, direction='{port: "flags[4]", forward: 1, valid: always}') == []
+    expected = "x.yaml:8: direction: the port 'flags' (d.v:11) is declared [1:4], and bit 0 is none of them"
+    assert said(folder, rtl=rtl) == [expected]
+
+
+def test_an_input_with_a_value_of_its_own_may_be_left_open(folder: Path) -> None:
+    rtl = RTL.replace("input  wire             en", "input  logic            en = 1")
+    assert rtl != RTL
+    assert said(folder, rtl=rtl, inputs="{mode: {value: 2, width: 3}}") == []
+
+
+VHDL = """\
+library ieee;
+use ieee.std_logic_1164.all;
+entity axis is
+  port (
+    clk, a, b : in std_logic;
+    en : in std_logic{default};
+    pos : out std_logic_vector(7 downto 0));
+end entity;
+"""
+
+
+@pytest.mark.skipif(shutil.which("ghdl") is None, reason="needs ghdl to read VHDL")
+def test_a_vhdl_input_with_a_default_may_be_left_open(folder: Path) -> None:
+    lines = (
+        "tbkit: 1", "decoder: {top: axis, sources: [axis.vhd]}", "clock: {port: clk, rate: 50 MHz}", "reset: none",
+        "lines: {a: a, b: b}", "count: {port: pos, width: 8, signed: true}", "latency: {count: 3}",
+    )  # fmt: skip
+    (folder / "x.yaml").write_text("\n".join(lines))
+    for default, expected in (
+        (" := '1'", []),
+        ("", ["x.yaml:1: inputs: the input 'en' (axis.vhd:6) is not named; hold it at a value: `inputs: {en: 0}`"]),
+    ):
+        (folder / "axis.vhd").write_text(VHDL.replace("{default}", default))
+        assert [str(problem) for problem in check_against_rtl(read_contract(Path("x.yaml")))] == expected
