@@ -35,6 +35,7 @@ from tbkit.contract import (
     Step,
 )
 from tbkit.errors import InputError, Problem
+from tbkit.paces import LENGTHS, SPREAD, reset_clocks, reset_is_asynchronous, settle_clocks, shortest_state, try_pulses
 from tbkit.probe import GAP, Script, changes, probe, value_at
 from tbkit.rtl import Rtl, RtlPort, modules, read_rtl
 from tbkit.simulators import find
@@ -42,8 +43,6 @@ from tbkit.trace import Series, Trace
 from tbkit.yamltree import nearest
 
 RATE_MHZ = 100
-#: Widths of pulses, in clocks, that are tried on the filter.
-_WIDTHS = (*range(1, 41), 48, 56, 64, 80, 96, 128)
 #: A count is driven past its ends if that takes no more clocks.
 _FARTHEST_CLOCKS = 2_000_000
 
@@ -245,6 +244,7 @@ class _Prober:
             error=Error(error, "pulse") if error else None,
         )
         self.reset_on = 1
+        self.latency: dict[str, Span] = {}
 
     def script(self, state: str = "00") -> Script:
         return Script(self.reset_on, state).begin()
@@ -263,8 +263,8 @@ class _Prober:
         self._clock_edge()
         self._start()
         edges = self._sweep()
-        self._filter(edges)
         self._latencies()
+        self._paces(edges)
         self._illegal()
         if self.roles.index is not None:
             self._index()
@@ -348,32 +348,34 @@ class _Prober:
             self.draft.doubts.append("back and forth over one edge does not give the same count: it moves at another edge backward")
         return [edge[:4] for edge in counted]
 
-    def _filter(self, edges: list[tuple[int, str, str, int]]) -> None:
-        """Which single pulses pass, and what comes of many that do not."""
+    def _paces(self, edges: list[tuple[int, str, str, int]]) -> None:
+        """The filter, the shortest state, the reset's length and what follows it."""
         _, before, after, _ = next(edge for edge in edges if edge[3] > 0)
         line = "a" if before[0] != after[0] else "b"
-
-        def pulses(width: int, many: int, gap: int) -> Script:
-            script = self.script(before) if before in self.rest_states else self.script().go_to(before).wait(GAP)
-            script.mark("begin")
-            for _ in range(many):
-                script.toggles[line].append(script.now)
-                script.toggles[line].append(script.now + width)
-                script.wait(width + gap)
-            return script.wait(GAP)
-
-        scripts = [pulses(width, 3, 2 * GAP) for width in _WIDTHS]
-        seen: dict[int, int] = {}
-        for width, script, trace in zip(_WIDTHS, scripts, self.play(*scripts), strict=True):
-            moved = changes(self.main(trace), script.marks["begin"][0], int(script.now))
-            seen[width] = len(moved)
-        passing = [width for width in _WIDTHS if all(seen[w] >= 6 for w in _WIDTHS if w >= width)]  # 3 there, 3 back
-        never = [width for width in _WIDTHS if all(seen[w] == 0 for w in _WIDTHS if w <= width)]
-        self.passes, self.rejects = (min(passing) if passing else 1), (max(never) if never else 0)
-        self.bursts = False
-        if self.rejects:
-            (trace,) = self.play(script := pulses(self.rejects, 12, 1))
-            self.bursts = bool(changes(self.main(trace), script.marks["begin"][0], int(script.now)))
+        pulses = try_pulses(self, before, line, self.latency["count"])
+        if pulses.passes is None:
+            self.draft.doubts.append(f"pulses of {LENGTHS[-1]} clocks do not always pass; that those of more do is assumed")
+        self.passes, self.rejects, self.bursts = pulses.passes or LENGTHS[-1] + 1, pulses.rejects, pulses.bursts
+        self.gap = max(2 * self.passes, pulses.latest) + 8
+        shortest = shortest_state(self, self.gap)
+        if shortest is None:
+            self.draft.doubts.append("not every state is counted, however long it lasts")
+        self.shortest = shortest or 1
+        # Pulses that end in a state too short to be counted need no filter to explain them.
+        self.filters = self.rejects > 0 or self.passes > self.shortest
+        if self.filters and not self.rejects:
+            # What was let through may make what follows it come late.
+            self.bursts = True
+            late = pulses.latest - self.latency["count"].max
+            self.latency = {name: replace(span, max=span.max + late) for name, span in self.latency.items()}
+        self.asynchronous = self.reset_for = self.settle = None
+        if self.roles.reset is not None and self.rest_states:
+            if self.roles.count is not None:
+                self.asynchronous = reset_is_asynchronous(self, self.start_count)
+                self.reset_for = reset_clocks(self, self.rest_states, self.start_count)
+            settle = settle_clocks(self, self.rest_states, self.reset_for or 20, self.gap)
+            # What moves just before the release is answered after it.
+            self.settle = None if settle is None else max(settle, self.latency["count"].max + 1)
 
     def _latencies(self) -> None:
         """How long each output takes, over many edges at all phases."""
@@ -386,7 +388,7 @@ class _Prober:
             script.step(way, GAP + rng.random())
         (trace,) = self.play(script)
         main = self.main(trace)
-        self.latency = {"count": self._span(main, script)}
+        self.latency["count"] = self._span(main, script)
         if trace.step is not None and trace.count is not None:
             self.latency["step"] = self._span(trace.step, script)
         sign = 1 if self.forward == "a-leads-b" else -1
@@ -435,8 +437,9 @@ class _Prober:
     def _illegal(self) -> None:
         """What both lines at once do to the count and the error output."""
         script = self.script()
-        for state in A_LEADS_B:
-            script.go_to(state).wait(2 * GAP)
+        rng = random.Random(3)  # noqa: S311  # distances, no secrets
+        for state in A_LEADS_B * 10:
+            script.go_to(state).wait(2 * GAP + rng.randrange(SPREAD))
             script.mark("both")
             script.toggle("a", "b")
             script.wait(3 * GAP)
@@ -456,7 +459,7 @@ class _Prober:
         lasts = [one[1][0] - one[0][0] for one in told if len(one) > 1]
         self.error_kind = "pulse" if lasts and max(lasts) == 1 else "sticky"
         if self.error_kind == "pulse" and len(told) < len(marks):
-            self.draft.doubts.append(f"only {len(told)} of {len(marks)} kinds of illegal transition are reported")
+            self.draft.doubts.append(f"only {len(told)} of {len(marks)} illegal transitions are reported")
 
     def _index(self) -> None:
         """In which states the index sets the count, and to what."""
@@ -533,18 +536,20 @@ class _Prober:
     def _write(self) -> None:
         add, roles = self.draft.add, self.roles
         if roles.reset:
-            active = "high" if self.reset_on else "low"
+            active, kind = "high" if self.reset_on else "low", "sync" if self.asynchronous is False else "async"
+            assumed = [word for word, value in (("its kind", self.asynchronous), ("the clocks", self.reset_for)) if value is None]
             add(
                 "reset",
-                f"{{port: {roles.reset.name}, active: {active}, kind: async, clocks: 20}}",
-                "measured; kind and clocks are assumed",
+                f"{{port: {roles.reset.name}, active: {active}, kind: {kind}, clocks: {self.reset_for or 20}}}",
+                f"measured; assumed: {' and '.join(assumed)}" if assumed else "measured; the fewest clocks that do",
             )
         else:
             add("reset", "none", "named")
-        settle = max(8, self.passes + 2 * self.latency["count"].max)
+        settle = max(8, self.passes + 2 * self.latency["count"].max) if self.settle is None else self.settle
         states = "any" if len(self.rest_states) == len(A_LEADS_B) else f"[{', '.join(f'{state!r}' for state in self.rest_states)}]"
         count = f"count: {self.start_count}, " if roles.count else ""
-        add("start", f"{{{count}rest_states: {states}, settle: {settle}}}", "measured; settle is assumed")
+        how = "measured; settle is assumed" if self.settle is None else "measured"
+        add("start", f"{{{count}rest_states: {states}, settle: {settle}}}", how)
         a, b = (_line_text(line) for line in roles.lines)
         index = ""
         if roles.index:
@@ -561,9 +566,11 @@ class _Prober:
             add("illegal", "{count: any}", "measured: the count moves")
         if roles.index and roles.count:
             self._write_index()
-        if self.rejects or self.passes > 1:
+        if self.filters:
             bursts = ", bursts: open" if self.bursts else ""
-            add("filter", f"{{rejects: {self.rejects}, passes: {self.passes}{bursts}}}", "measured, to 128 clocks")
+            add("filter", f"{{rejects: {self.rejects}, passes: {self.passes}{bursts}}}", f"measured, to {LENGTHS[-1]} clocks")
+        if self.shortest > 1:
+            add("shortest_state", str(self.shortest), f"measured, to {LENGTHS[-1]} clocks")
         add(
             "latency",
             f"{{{', '.join(f'{name}: {_span_text(span)}' for name, span in self._told_latencies().items())}}}",
@@ -608,7 +615,7 @@ class _Prober:
         assert self.contract.count is not None
         count = self.contract.count
         way = 1 if self.forward == "a-leads-b" else -1
-        gap = max(2 * self.passes, self.latency["count"].max) + 4
+        gap = max(2 * self.passes, self.latency["count"].max, self.shortest) + 4
         far = (count.size + 4) * self.every
         if far * gap > _FARTHEST_CLOCKS:
             self.draft.doubts.append("the count was not driven to its ends; that it wraps there is assumed")

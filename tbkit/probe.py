@@ -40,12 +40,12 @@ class Script:
     edges: list[tuple[int, str, str, int]] = field(default_factory=list)
     marks: dict[str, list[int]] = field(default_factory=dict)
 
-    def begin(self) -> Script:
-        """Asserts the reset for a while and lets the decoder come to rest; call it first."""
+    def begin(self, clocks: int = 20, rest: float = GAP) -> Script:
+        """Asserts the reset for some ``clocks`` and lets the decoder ``rest``; call it first."""
         self.firsts = {"a": int(self.state[0]), "b": int(self.state[1]), "reset": self.reset_on}
-        self.now = 20 + PHASE
+        self.now = clocks + PHASE
         self.toggles["reset"].append(self.now)
-        self.now += GAP
+        self.now += rest
         return self
 
     def mark(self, name: str) -> None:
