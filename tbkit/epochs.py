@@ -85,6 +85,9 @@ def releases(
     found: list[Release] = []
     settle = contract.start.settle
     set_to = contract.index.value if contract.index and contract.index.action == "set" else contract.start.count
+    # A filter that adds up pulses may take even a level that passes late, and the next one for that.
+    lateness = contract.main_latency.max - contract.main_latency.min if contract.filter.bursts_open else 0
+    surely = contract.filter.passes + lateness
     for begin, end in spans:
         # What the filter holds after a reset is known once each line has had a level for as long as always passes.
         near = np.searchsorted(activity.raw, [end - max(settle, contract.filter.passes), end + settle])
@@ -100,7 +103,7 @@ def releases(
             how = "elsewhere"
         else:
             how = "index" if contract.start.count != set_to and end in index_active else "rest"
-        awake = end - 1 if how == "rest" else activity.known(end + settle, contract.filter.passes)
+        awake = end - 1 if how == "rest" else activity.known(end + settle, surely)
         found.append(Release(begin, end, awake, how))
     return found
 
