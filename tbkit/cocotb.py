@@ -25,7 +25,7 @@ from cocotb.clock import Clock
 from cocotb.simtime import get_sim_time
 from cocotb.triggers import ReadOnly, Timer
 
-from tbkit.contract import DEEDS, Contract, Output, Port, Slice
+from tbkit.contract import Contract, Output, Port, Slice
 from tbkit.contract_file import read_contract
 from tbkit.encoder import LINES, Edges, Line
 from tbkit.errors import UnfitError
@@ -37,7 +37,7 @@ from tbkit.profile_file import read_profile
 from tbkit.render import driven
 from tbkit.scoreboard import judge
 from tbkit.shaftoracle import rests
-from tbkit.stimulus import CLEARANCE_PS, SIGNALS, Stimulus, Unfold, compile_stimulus, lay_out
+from tbkit.stimulus import CLEARANCE_PS, DRIVES, SIGNALS, Stimulus, Unfold, compile_stimulus, lay_out
 from tbkit.trace import Series, as_trace, compressed
 from tbkit.units import Scale, parse
 
@@ -271,7 +271,7 @@ class Scoreboard:
         )
         zero = np.zeros(1, dtype=np.int64)
         stimulus = Stimulus(
-            "live", 0, period_ps, {name: every[name] for name in LINES}, {name: every[name] for name in ("reset", *DEEDS)},
+            "live", 0, period_ps, {name: every[name] for name in LINES}, {name: every[name] for name in DRIVES},
             ideal, 0, 0, periods, Unfold(zero, zero), power_up=False,
         )  # fmt: skip
         score = _score(self.contract, stimulus, {name: log.series(origin_ps, period_ps) for name, log in self._outputs.items()})

@@ -19,7 +19,11 @@ DEEDS = {
     "preload": "preload",
     "disable": "enable",
     "disarm": "arm",
+    "arm": "arm-once",
 }
+
+#: The longest time, in clocks, in which the bench does not ask a count that is read through a latch.
+LATCH_GAP = 4
 
 #: Line states AB in the order in which A leads B.
 A_LEADS_B = ("00", "10", "11", "01")
@@ -147,8 +151,9 @@ class Input:
 
     Attributes:
         role: ``clear-error``, ``clear-count`` and ``preload`` (the count becomes ``value``), ``enable`` (without it nothing is
-            counted) or ``arm`` (without it the index does nothing).
-        edge: a clear or preload acts once, as it is asserted, not for as long as it is.
+            counted), ``arm`` (without it the index does nothing), ``arm-once`` (after it the index acts once) or ``latch`` (the
+            count's port takes the count).
+        edge: a clear, preload or latch acts once, as it is asserted, not for as long as it is.
         counts_last: a step in the same clock counts on from ``value`` instead of being lost.
         resyncs: an enable starts to count from the state in which it finds the lines; otherwise what it makes of a motion that
             it has not seen is its own business.
@@ -290,7 +295,12 @@ class Filter:
 
 @dataclass(frozen=True, slots=True)
 class Contract:
-    """Everything a decoder file says; ``file`` is where it was read, ``places`` the lines of its keys."""
+    """Everything a decoder file says.
+
+    Attributes:
+        file: where it was read; ``places``: the lines of its keys.
+        illegal_moves: by how much the count moves where both lines change at once, for each state 2·A + B before; None: anything.
+    """
 
     file: Path
     design: Design
@@ -307,7 +317,7 @@ class Contract:
     direction: Direction | None = None
     step: Step | None = None
     error: Error | None = None
-    illegal_holds: bool = True
+    illegal_moves: tuple[int, ...] | None = (0, 0, 0, 0)
     index: Index | None = None
     filter: Filter = field(default_factory=Filter)
     shortest_state: int = 1
@@ -317,6 +327,11 @@ class Contract:
     def input(self, role: str) -> Input | None:
         """The input with this role, if there is one."""
         return next((one for one in self.inputs if one.role == role), None)
+
+    @property
+    def illegal_holds(self) -> bool:
+        """Whether the count stays where it is when both lines change at once."""
+        return self.illegal_moves is not None and not any(self.illegal_moves)
 
     @property
     def main_latency(self) -> Span:
@@ -341,4 +356,5 @@ class Contract:
     @property
     def settle_clocks(self) -> int:
         """Clocks after the last edge by which every output is at rest."""
-        return max(self.start.settle, self.filter.passes + self.latency.longest + 2)
+        asked = LATCH_GAP + self.latency.inputs.max if self.input("latch") else 0
+        return max(self.start.settle, self.filter.passes + self.latency.longest + asked + 2)

@@ -51,8 +51,34 @@ def _check_inputs(contract: Contract, note: Note) -> None:
             note(f"a {role} input needs a `count` output", "inputs")
         elif one and contract.count and not _in_range(contract.count, one.value):
             note(f"the value {one.value} of the {role} input {_outside(contract.count)}", "inputs", "count")
-    if contract.input("arm") and contract.index is None:
-        note("an arm input needs an `index` action", "inputs")
+    latency, index = contract.latency, contract.index
+    for role in ("arm", "arm-once"):
+        if contract.input(role) and index is None:
+            note(f"an {role} input needs an `index` action", "inputs")
+    if contract.input("arm-once") and index and index.action == "set" and not index.edge:
+        note("with an arm-once input the index acts once each time; write `sense: edge` for the index", "index", "inputs")
+    if contract.input("arm-once") and not (latency.inputs.exact and latency.index.exact):
+        note("with an arm-once input the latencies `inputs` and `index` must be one number each", "latency", "inputs")
+    if contract.input("latch"):
+        _check_latch(contract, note)
+
+
+def _check_latch(contract: Contract, note: Note) -> None:
+    latency, index, direction = contract.latency, contract.index, contract.direction
+    if contract.count is None:
+        note("a latch input needs a `count` output, which it makes readable", "inputs")
+    if not contract.clock.port or contract.clock.tick:
+        note("a latch input needs a clock, without a tick", "inputs", "clock")
+    if direction and direction.with_count:
+        note(
+            "on a count that is read through a latch nobody sees when it moves; write `valid: always`, or leave it out", "direction"
+        )
+    if not (latency.count.exact and latency.inputs.exact):
+        note("with a latch input the latencies `count` and `inputs` must be one number each", "latency", "inputs")
+    if index and index.action == "latch":
+        note("the index cannot be checked to latch a count that is itself read through a latch", "index", "inputs")
+    if index and index.action == "set" and latency.index != latency.count:
+        note("with a latch input the latency `index` must be that of `count`", "latency", "inputs")
 
 
 def _check_language(contract: Contract, note: Note) -> None:

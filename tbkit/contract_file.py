@@ -42,6 +42,10 @@ LONGEST_CLOCKS = 1_000_000
 VERILOG_SUFFIXES, VHDL_SUFFIXES = (".v", ".sv"), (".vhd", ".vhdl")
 SHORTEST_PERIOD_PS = 8
 MOST_CLOCKS_A_TICK = 1_000_000
+#: States AB by their code 2·A + B.
+CODES = ("00", "01", "10", "11")
+#: How far an illegal transition may move the count.
+MOST_MOVE = 4
 #: What is called a clock of a decoder that has none.
 NO_CLOCK_PS = 1000
 
@@ -49,11 +53,10 @@ _KEYS = (
     "tbkit", "decoder", "clock", "reset", "start", "lines", "inputs", "count", "direction", "step", "error", "illegal",
     "index", "latency", "filter", "shortest_state", "timers",
 )  # fmt: skip
-_ROLES = ("constant", "clear-error", "clear-count", "preload", "enable", "arm")
+_ROLES = ("constant", "clear-error", "clear-count", "preload", "enable", "arm", "arm-once", "latch")
 _INPUT_KEYS = ("port", "role", "value", "width", "active", "sense", "step_together", "resumes")
 # Words the format knows and this version does not act on yet: said so, never passed over.
-_LATER_KEYS = ("velocity", "latch")
-_LATER_ROLES = ("latch",)
+_LATER_KEYS = ("velocity",)
 
 
 def _active_low(section: Section) -> bool:
@@ -340,7 +343,7 @@ class _Reader:
         for name, value in entry.pairs("a map of input names and values") if entry else []:
             section = value.section(_INPUT_KEYS) if value.is_map else None
             role_entry = section.get("role") if section else None
-            role = role_entry.choice(_ROLES, _LATER_ROLES) if role_entry else "constant"
+            role = role_entry.choice(_ROLES) if role_entry else "constant"
             port_entry = section.get("port") if section else None
             port = port_entry.identifier() if port_entry else name
             if port_entry is None and (fault := identifier_fault(name)):
@@ -376,12 +379,16 @@ class _Reader:
         for key, roles in (
             ("value", ("preload",)),
             ("width", ()),
-            ("sense", sets),
+            ("sense", (*sets, "latch")),
             ("step_together", sets),
             ("resumes", ("enable",)),
         ):
             if (extra := section.get(key)) and role not in roles:
-                what = f"`{key}` belongs to {' and '.join(roles)} inputs" if roles else "the tool drives it"
+                what = (
+                    f"`{key}` belongs to {' and '.join([', '.join(roles[:-1]), roles[-1]][len(roles) == 1 :])} inputs"
+                    if roles
+                    else "the tool drives it"
+                )
                 extra.problem(f"this has no meaning for an input with the role {role}: {what}")
         value = section.require("value", "1000") if role == "preload" else None
         sense, together, resumes = section.get("sense"), section.get("step_together"), section.get("resumes")
@@ -495,6 +502,19 @@ class _Reader:
         output = _number("error", port, bits.integer(1, 32) if bits else 1)
         return Error(output, kind, holds=overflow is not None and overflow.choice(("wrap", "hold")) == "hold")
 
+    def illegal(self) -> tuple[int, ...] | None:
+        """The count's move on each illegal transition, by the state 2·A + B before it; None: anything."""
+        entry = self.top.get("illegal")
+        count = entry.section(("count",)).require("count", "hold") if entry else None
+        if count is None:
+            return (0, 0, 0, 0)
+        if not count.is_map:
+            word = count.choice(("hold", "any"), instead=' or moves such as {"00": 1, "11": 1, "01": -1, "10": -1}')
+            return None if word == "any" else (0, 0, 0, 0)
+        section = count.section(CODES)
+        moves = [section.require(f"{state}", "1") for state in CODES]
+        return tuple(move.integer(-MOST_MOVE, MOST_MOVE) if move else 0 for move in moves)
+
     def index(self, count: Count | None) -> Index | None:
         entry = self.top.get("index")
         if entry is None:
@@ -585,8 +605,7 @@ def read_contract(path: Path) -> Contract:
     reader = _Reader(top, path.parent)
     constants, inputs = reader.inputs()
     a, b, index_line = reader.lines()
-    illegal, shortest, timers = top.get("illegal"), top.get("shortest_state"), top.get("timers")
-    illegal_count = illegal.section(("count",)).require("count", "hold") if illegal else None
+    shortest, timers = top.get("shortest_state"), top.get("timers")
     count, design = reader.count(), reader.design()
     reader.vhdl = design.language == "vhdl"
     contract = Contract(
@@ -605,7 +624,7 @@ def read_contract(path: Path) -> Contract:
         reader.direction(),
         reader.step(),
         reader.error(),
-        illegal_count is None or illegal_count.choice(("hold", "any")) == "hold",
+        reader.illegal(),
         reader.index(count),
         reader.filter(),
         shortest.integer(1, LONGEST_CLOCKS) if shortest else 1,

@@ -136,13 +136,18 @@ class Cutter:
             breaks.append((0, 0, Open(0, 0, known=False)))
         epochs: list[Epoch] = []
         building: Epoch | None = None
+        until = -1
         resets = [r.begin for r in self.releases]
         for begin, end, cause in sorted(breaks, key=lambda item: item[:2]):
             if isinstance(cause, Release):
                 if building is not None:
                     epochs += self._closed(building, begin - 1, low)
                 building = self._after_release(cause, low, high)
+                if until >= end:
+                    # What was open before the reset still is.
+                    building = self._open_ended(*self._quiet(max(until, cause.awake), low, high), "adopt")
                 continue
+            until = max(until, end)
             base = "carry" if cause.known else "adopt"
             after = end
             if building is not None:

@@ -16,7 +16,7 @@ from tbkit.stimulus import Stimulus
 from tbkit.trace import Trace
 
 #: The roles of inputs by the deed that exercises them.
-_DEEDS = {role: deed for deed, role in DEEDS.items()}
+_DEEDS = {"latch": "latch", **{role: deed for deed, role in DEEDS.items()}}
 
 
 def declared(contract: Contract) -> tuple[str, ...]:
@@ -25,7 +25,7 @@ def declared(contract: Contract) -> tuple[str, ...]:
     found += [f"reversal in {state}, {way}" for state in A_LEADS_B for way in ("from forward", "from backward")]
     if contract.count:
         found += ["upper end of the count", "lower end of the count"]
-    if contract.error or contract.illegal_holds:
+    if contract.error or contract.illegal_moves is not None:
         found += [f"illegal transition from {state}" for state in A_LEADS_B]
     if contract.index:
         found += ["index entered forward", "index entered backward"]
@@ -34,7 +34,8 @@ def declared(contract: Contract) -> tuple[str, ...]:
     if contract.reset:
         found += [f"reset released in {state}" for state in contract.start.rest_states] + ["reset released in motion"]
     found += [f"{one.role} input" for one in contract.inputs]
-    found += [f"{one.role} input in the clock of a step" for one in contract.inputs if one.role in ("clear-count", "preload")]
+    together = ("clear-count", "preload", "latch")
+    found += [f"{one.role} input in the clock of a step" for one in contract.inputs if one.role in together]
     return tuple(found)
 
 
@@ -67,6 +68,9 @@ def exercised(contract: Contract, stimulus: Stimulus, expectation: Expectation, 
         if one.role in ("clear-count", "preload"):
             together = sure & events.by_input & (events.moved != 0) & (events.to == one.value)
             seen[f"{one.role} input in the clock of a step"] = int(together.sum())
+        if expectation.answered is not None and one.role == "latch":
+            at_once = np.isin(events.period[sure & (events.step != 0)] + contract.latency.count.min, expectation.answered)
+            seen["latch input in the clock of a step"] = int(at_once.sum())
     return seen
 
 

@@ -95,6 +95,7 @@ class Expectation:
         direction: levels of a direction output that is always valid.
         sticky_error: levels of a sticky error.
         open_periods: clock periods in which the count is not compared.
+        answered: int64[n], when a count that is read through a latch is shown anew; None: it always is.
     """
 
     events: Events
@@ -105,3 +106,4 @@ class Expectation:
     direction: Hold | None
     sticky_error: Hold | None
     open_periods: int
+    answered: Int64s | None = None

@@ -20,7 +20,8 @@ def direction_levels(contract: Contract, events: Events, epochs: tuple[Epoch, ..
     for epoch in epochs:
         chosen = np.arange(epoch.first, epoch.last)
         chosen = chosen[events.before[chosen] != events.after[chosen]]
-        moved, sure = events.moved[chosen], events.step[chosen] != 0
+        moved = events.moved[chosen]
+        sure = (events.step[chosen] != 0) & (moved != 0)
         # The sign of the last sure event before or at each event, and whether every event since agrees with it.
         last_sure = np.maximum.accumulate(np.where(sure, np.arange(len(chosen)), -1))
         sign = np.where(last_sure >= 0, moved[np.maximum(last_sure, 0)], 0)

@@ -7,7 +7,7 @@ them meet is open.
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -51,8 +51,43 @@ def within(periods: Int64s, spans: tuple[tuple[int, int], ...]) -> Bools:
     return inside
 
 
-def acts(contract: Contract, asserted: Callable[[str], Spans]) -> Acts:
-    """What inputs do; ``asserted`` gives the periods in which a deed of :data:`DEEDS` is on, the end not included."""
+def _armed_once(presses: Spans, zones: Spans, resets: Spans, doubts: Sequence[Open], periods: int) -> tuple[Spans, list[Open]]:
+    """When the index does nothing, and where that is open, if each press of an input lets it act once.
+
+    Not said is what comes of a press in a reset or while the index is active already, and whether an index that acts while the
+    press still lasts has used it up. ``doubts``: where it is not sure whether the index is active.
+    """
+    disarmed: Spans = []
+    opens: list[Open] = []
+    state, since, held = "off", 0, 0
+    moments = [(begin, 0, end) for begin, end in resets] + [(begin, 1, end) for begin, end in presses]
+    moments += [(begin, 2, end) for begin, end in zones] + [(doubt.begin, 3, doubt.end) for doubt in doubts if not doubt.known]
+    for begin, what, end in sorted(moments):
+        if what == 0:
+            since = since if state == "off" else begin
+            state = "off"
+        elif what == 1:
+            if state == "off":
+                disarmed.append((since, begin))
+            clash = any(first <= end and begin <= last for first, last in (*resets, *zones))
+            state, held = "maybe" if clash else "on", end
+        elif what == 3 and state == "on":
+            state = "maybe"
+        elif what == 2 and state != "off":
+            if state == "maybe":
+                opens.append(Open(begin, begin, known=False))
+            state, since = ("maybe", since) if begin < held else ("off", begin + 1)
+    if state == "off":
+        disarmed.append((since, periods))
+    return disarmed, opens
+
+
+def acts(contract: Contract, asserted: Callable[[str], Spans], zones: Spans, doubts: Sequence[Open], periods: int) -> Acts:
+    """What inputs do in a run of ``periods``.
+
+    ``asserted`` gives the periods in which the reset or a deed of :data:`DEEDS` is on, the end not included; ``zones``: those in
+    which the index is active, armed or not, both ends included; ``doubts``: where the lines are not sure.
+    """
     by, main, index = contract.latency.inputs, contract.main_latency, contract.latency.index
     sets: list[tuple[int, int, Input]] = []
     disabled: Spans = []
@@ -62,6 +97,13 @@ def acts(contract: Contract, asserted: Callable[[str], Spans]) -> Acts:
     for deed, role in DEEDS.items():
         one = contract.input(role)
         if one is None or role == "clear-error":
+            continue
+        if role == "arm-once":
+            shift = by.min - index.min
+            presses = [(begin + shift, end + shift) for begin, end in asserted(deed)]
+            settle = contract.start.settle
+            resets = [(begin, end + settle) for begin, end in asserted("reset")] if contract.reset else []
+            disarmed, opens = _armed_once(presses, zones, resets, doubts, periods)
             continue
         met = index if role == "arm" else main
         for begin, end in asserted(deed):

@@ -16,6 +16,7 @@ from tbkit.epochs import Activity, Cutter, Open, releases
 from tbkit.expectation import Bools, Events, Expectation, Int64s
 from tbkit.holds import direction_levels, sticky_levels
 from tbkit.inputs import Acts, acts, within
+from tbkit.latched import answers, shown
 from tbkit.ordered import merged
 from tbkit.stimulus import Stimulus
 
@@ -129,6 +130,8 @@ def _count_table(contract: Contract) -> Int64s:
         if state in entered:
             before = order[place - 1]
             table[before, state], table[state, before] = 1, -1
+    for before, move in enumerate(contract.illegal_moves or ()):
+        table[before, before ^ 0b11] = move
     return table
 
 
@@ -164,6 +167,17 @@ class _Lines:
     doubt_a: Doubt
     doubt_b: Doubt
     doubt_index: Doubt
+
+
+def _index_zones(contract: Contract, lines: _Lines) -> list[tuple[int, int]]:
+    """The periods (both ends included) in which the index is active, armed or not."""
+    # From before the first change on: it may be active from the beginning.
+    period = np.append(-1, merged(lines.a.period, lines.b.period, lines.index.period))
+    active = _index_active(contract, *(line.level(period) for line in (lines.a, lines.b, lines.index)))
+    begins = np.flatnonzero(active & ~np.append(False, active[:-1]))
+    ends = np.flatnonzero(active & ~np.append(active[1:], False))
+    last = np.append(period[1:], _NEVER) - 1
+    return list(zip(period[begins].tolist(), last[ends].tolist(), strict=True))
 
 
 def _still(line: Changes, doubt: Doubt, begin: Int64s, end: Int64s) -> Bools:
@@ -288,8 +302,9 @@ def expect(contract: Contract, stimulus: Stimulus) -> Expectation:
     """What the contract allows for this stimulus."""
     sampled = {name: sample(line, stimulus.period_ps) for name, line in stimulus.lines.items()}
     lines = _filter_lines(contract, sampled)
-    by_inputs = acts(contract, lambda deed: _asserted(stimulus, deed))
-    opens = sorted([*_opens(contract, lines), *by_inputs.opens, *_clashes(contract, lines, by_inputs)])
+    doubts = _opens(contract, lines)
+    by_inputs = acts(contract, lambda deed: _asserted(stimulus, deed), _index_zones(contract, lines), doubts, stimulus.periods)
+    opens = sorted([*doubts, *by_inputs.opens, *_clashes(contract, lines, by_inputs)])
     events = make_events(contract, lines, opens, by_inputs)
     unordered = _unordered(contract, events)
     if unordered:
@@ -308,12 +323,18 @@ def expect(contract: Contract, stimulus: Stimulus) -> Expectation:
     released = releases(contract, stimulus, events, spans, activity, ends[index_on], [span[:2] for span in by_inputs.sets])
     cutter = Cutter(contract, events, released, activity, stimulus.periods)
     latency = contract.latency
-    rebases = [] if contract.illegal_holds else [Open(int(k), int(k), False) for k in events.period[events.illegal]]
-    step_epochs = cutter.cut(wide + rebases, latency.step.min, latency.step.max)
+    jumps = [] if contract.illegal_holds else [Open(int(k), int(k), False) for k in events.period[events.illegal]]
+    # Whether a step output tells a move that is none of the shaft's, the contract does not say.
+    step_epochs = cutter.cut(wide + jumps, latency.step.min, latency.step.max)
+    rebases = jumps if contract.illegal_moves is None else []
     epochs = step_epochs
     if contract.count:
         moving = [latency.count, latency.index] if contract.index and contract.index.action == "set" else [latency.count]
         epochs = cutter.cut(opens + rebases + unordered, min(span.min for span in moving), max(span.max for span in moving))
+    answered = None
+    if contract.input("latch"):
+        answered = answers(contract, _asserted(stimulus, "latch"))
+        epochs = shown(epochs, events, contract, answered)
     direction = sticky = None
     if contract.direction and not contract.direction.with_count:
         direction = direction_levels(contract, events, cutter.cut(wide, latency.direction.min, latency.direction.max))
@@ -330,6 +351,7 @@ def expect(contract: Contract, stimulus: Stimulus) -> Expectation:
         direction,
         sticky,
         stimulus.periods - compared,
+        answered,
     )
 
 

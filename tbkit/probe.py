@@ -13,12 +13,12 @@ from pathlib import Path
 import numpy as np
 
 from tbkit import bench
-from tbkit.contract import A_LEADS_B, DEEDS, Contract
+from tbkit.contract import A_LEADS_B, Contract
 from tbkit.encoder import LINES, Edges, Line
 from tbkit.errors import SimulatorError
 from tbkit.motion import Crossings
 from tbkit.simulators import Simulator
-from tbkit.stimulus import SIGNALS, Stimulus, Unfold
+from tbkit.stimulus import DRIVES, SIGNALS, Stimulus, Unfold
 from tbkit.trace import Series, Trace, read_trace
 
 #: Clocks after which everything a decoder does in answer to an edge is over.
@@ -92,7 +92,7 @@ class Script:
         ideal = Edges({}, Crossings(none, none, none.astype(bool)), 0.5, (), exact_index=True)
         return Stimulus(
             f"probe-{number}", 0, period_ps, {name: lines[name] for name in LINES},
-            {name: lines[name] for name in ("reset", *DEEDS)}, ideal, 0, None, int(self.now) + GAP, Unfold(zero, zero),
+            {name: lines[name] for name in DRIVES}, ideal, 0, None, int(self.now) + GAP, Unfold(zero, zero),
             power_up=fresh,
         )  # fmt: skip
 

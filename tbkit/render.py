@@ -75,6 +75,8 @@ def driven(contract: Contract) -> list[tuple[Port, str]]:
     for signal, role in DEEDS.items():
         one = contract.input(role)
         ports[signal] = one.port if one else None
+    latch = contract.input("latch")
+    ports["latch"] = latch.port if latch else None
     return [
         (port, f"{'~' if port.active_low != (name in opposite) else ''}line_{name}")
         for name, port in ports.items()

@@ -8,7 +8,7 @@ count is one finding.
 from __future__ import annotations
 
 from collections import Counter
-from dataclasses import dataclass, field, replace
+from dataclasses import dataclass, field, fields, replace
 
 import numpy as np
 
@@ -80,7 +80,7 @@ class _Due:
     """Changes that are due on one output within one epoch, one after another.
 
     ``absolute``: the count is set, ``by_input`` or by the index. ``on_the_way``: the step alone may be seen before the index sets
-    the count. ``optional``: may come after the epoch's end.
+    the count. ``optional``: may come after the epoch's end. ``first``: the first of several events that show at once.
     """
 
     earliest: Int64s
@@ -92,6 +92,11 @@ class _Due:
     on_the_way: Bools
     optional: Bools
     event: Int64s
+    first: Int64s
+
+    def some(self, chosen: Int64s | Bools) -> _Due:
+        """Some of them."""
+        return _Due(*(getattr(self, one.name)[chosen] for one in fields(self)))
 
 
 def judge(contract: Contract, stimulus: Stimulus, expectation: Expectation, rests: Rests, trace: Trace) -> Score:
@@ -156,8 +161,9 @@ def _apart(contract: Contract) -> bool:
     return contract.latency.count != contract.latency.index or not contract.latency.count.exact
 
 
-def _due_counts(contract: Contract, events: Events, epoch: Epoch, base: int) -> _Due:
+def _due_counts(contract: Contract, expectation: Expectation, epoch: Epoch, base: int) -> _Due:
     """The count changes that are due in an epoch."""
+    events = expectation.events
     assert contract.count is not None
     chosen = slice(epoch.first, epoch.last)
     step, sets, leaves = events.step[chosen], events.sets[chosen], events.leaves_index[chosen]
@@ -175,18 +181,30 @@ def _due_counts(contract: Contract, events: Events, epoch: Epoch, base: int) -> 
     # Counted first, set a little later: the step alone may be seen on the way.
     on_the_way = events.enters_index[chosen] & sets & ~by_input & (step != 0) & _apart(contract)
     earliest = np.where(on_the_way, period + min(by_count.min, by_index.min), earliest)
-    keep = np.flatnonzero((value != before) | on_the_way)
-    return _Due(
-        earliest[keep],
-        latest[keep],
-        value[keep],
-        step[keep],
-        sets[keep],
-        by_input[keep],
-        on_the_way[keep],
-        latest[keep] > epoch.end,
-        epoch.first + keep,
-    )
+    event = np.arange(epoch.first, epoch.last)
+    due = _Due(earliest, latest, value, step, sets, by_input, on_the_way, latest > epoch.end, event, event)
+    if expectation.answered is not None:
+        due, before = _at_answers(due, before, expectation.answered, epoch.end)
+    return due.some((due.value != before) | due.on_the_way)
+
+
+def _at_answers(due: _Due, before: Int64s, answered: Int64s, end: int) -> tuple[_Due, Int64s]:
+    """What is due on a port that shows the count only now and then, and the count before each; those not shown are left out."""
+    turn = np.searchsorted(answered, due.latest)
+    many = int(np.searchsorted(turn, len(answered)))
+    due, before, turn = due.some(np.arange(len(turn)) < many), before[:many], turn[:many]
+    if many == 0:
+        return due, before
+    begins = np.append(True, turn[1:] != turn[:-1])
+    first, last = np.flatnonzero(begins), np.flatnonzero(np.append(begins[1:], True))
+    at = answered[turn[last]]
+    step, absolute = np.add.reduceat(due.step, first), np.logical_or.reduceat(due.absolute, first)
+    # At the ends of a count that holds there, steps do not add up.
+    absolute |= np.abs(step) > np.abs(due.value[last] - before[first])
+    found = due.some(last)
+    return replace(found, earliest=at, latest=at, step=step, absolute=absolute, optional=at > end, first=due.event[first]), before[
+        first
+    ]
 
 
 def _count(book: _Book, expectation: Expectation, rests: Rests, series: Series) -> tuple[Int64s, Int64s] | None:
@@ -207,7 +225,7 @@ def _count(book: _Book, expectation: Expectation, rests: Rests, series: Series) 
         if epoch.base == "carry" and carried is not None:
             carried = _carried(contract, expectation.events, done, epoch.first, carried)
         base = _base(book, epoch, seen, carried)
-        due = _due_counts(contract, expectation.events, epoch, base)
+        due = _due_counts(contract, expectation, epoch, base)
         changes = _changes_within(series, epoch.begin, epoch.end)
         when, value = series.period[changes], series.value[changes]
         book.comparisons += len(due.value)
@@ -227,7 +245,7 @@ def _count(book: _Book, expectation: Expectation, rests: Rests, series: Series) 
             matched.append(np.array([event for _, event in right], dtype=np.int64))
         # What a fault has left behind is carried along, so that it is found once.
         carried = int(value[-1]) if len(value) else seen
-        done = int(due.event[shown]) if shown < len(due.event) else epoch.last
+        done = int(due.first[shown]) if shown < len(due.first) else epoch.last
     if due_total and not responses:
         _silent(book, "count", expectation.events, epochs)
     before = sum(book.totals.values())
@@ -436,7 +454,8 @@ def _direction_with_count(book: _Book, series: Series, periods: Int64s, event: I
     assert contract.direction is not None
     main = contract.latency.count if contract.count is not None else contract.latency.step
     span = contract.latency.direction
-    stepped = events.step[event] != 0
+    # What an illegal transition moves has no direction.
+    stepped = (events.step[event] != 0) & (events.moved[event] != 0)
     event, periods = event[stepped], periods[stepped]
     book.comparisons += len(event)
     forward = contract.direction.forward_level

@@ -80,7 +80,9 @@ def rests(contract: Contract, stimulus: Stimulus, doubtful_ps: Int64s) -> Rests:
         gated = np.where((gated == 1) & (since_ps >= begin_ps) & (since_ps <= end_ps), -1, gated)
 
     quiet_ps = contract.settle_clocks * period_ps
-    acting = [line.toggles_ps for line in (*stimulus.lines.values(), *stimulus.drives.values())]
+    # Reading the count is no act.
+    driven = [line for name, line in stimulus.drives.items() if name != "latch"]
+    acting = [line.toggles_ps for line in (*stimulus.lines.values(), *driven)]
     # The shaft as well: chatter can delay the first edge that is seen of a motion.
     moves = merged(*acting, ledger.time_ps)
     ends = np.append(moves[1:], stimulus.periods * period_ps)
@@ -178,14 +180,18 @@ def _origins(
             sure = known and gated[at] == 1 and not contract.index.edge
             value = contract.index.value if sure else None
         origins.append(_Origin(time, value, int(counted[at])))
-    origins += _by_inputs(contract, stimulus, since_ps, counted, quiet_ps)
+    origins += _by_inputs(contract, stimulus, since_ps, counted, gated, quiet_ps)
     if contract.index is not None and contract.index.edge:
         gated = np.where((gated == 1) & (np.concatenate([[0], gated[:-1]]) == 1), 0, gated)
+    armed = _spans(stimulus, "arm")
     for at in np.flatnonzero(gated).tolist():
+        if contract.input("arm-once") and not any(begin <= since_ps[at] for begin, _ in armed):
+            continue
         # Soon after a reset the decoder need not be awake; while an input acts, what the index does is the line oracle's affair.
-        asleep = any(begin <= since_ps[at] < time + quiet_ps for begin, time in (*releases, *busy))
+        asleep = any(begin <= since_ps[at] < time + quiet_ps for begin, time in releases)
+        asleep |= any(begin - quiet_ps <= since_ps[at] < time + quiet_ps for begin, time in busy)
         assert contract.index is not None
-        value = contract.index.value if gated[at] == 1 and not asleep else None
+        value = contract.index.value if gated[at] == 1 and not asleep and not armed else None
         # The step into the index counts on from the value, or is lost to it; a jump is no step.
         stepped = at > 0 and abs(int(place[at] - place[at - 1])) == 1
         ideal = counted[at - 1] if contract.index.counts_last and stepped else counted[at]
@@ -193,13 +199,15 @@ def _origins(
     return origins
 
 
-def _by_inputs(contract: Contract, stimulus: Stimulus, since_ps: Int64s, counted: Int64s, quiet_ps: int) -> list[_Origin]:
+def _by_inputs(
+    contract: Contract, stimulus: Stimulus, since_ps: Int64s, counted: Int64s, gated: Int64s, quiet_ps: int
+) -> list[_Origin]:
     """What inputs make of the count: set at rest it is known again, and what moves while it is disabled is not counted."""
     moves = np.concatenate([stimulus.lines["a"].toggles_ps, stimulus.lines["b"].toggles_ps])
     found: list[_Origin] = []
     for deed, role in DEEDS.items():
         one = contract.input(role)
-        if one is None or role in ("clear-error", "arm"):
+        if one is None or role in ("clear-error", "arm", "arm-once"):
             continue
         for begin, end in _spans(stimulus, deed):
             near = bool(((moves > begin - quiet_ps) & (moves < end + quiet_ps)).any())
@@ -208,7 +216,8 @@ def _by_inputs(contract: Contract, stimulus: Stimulus, since_ps: Int64s, counted
             if role != "enable" or near:
                 found.append(_Origin(begin, None, 0))
             if role != "enable" and not near:
-                found.append(_Origin(end, one.value, int(counted[at])))
+                # An index that is active then sets the count again.
+                found.append(_Origin(end, None if gated[at] else one.value, int(counted[at])))
     return found
 
 

@@ -12,7 +12,7 @@ from fractions import Fraction
 
 import numpy as np
 
-from tbkit.contract import A_LEADS_B, DEEDS, Contract
+from tbkit.contract import A_LEADS_B, DEEDS, LATCH_GAP, Contract
 from tbkit.course import build_motion
 from tbkit.disturb import Disturbed, Scene, disturb
 from tbkit.encoder import LINES, Edges, Line, encode, index_windows
@@ -23,7 +23,8 @@ from tbkit.profile import Profile
 from tbkit.units import Scale
 
 #: Bits of a word's levels, in this order; the bench template uses the same.
-SIGNALS = (*LINES, "reset", *DEEDS)
+DRIVES = ("reset", *DEEDS, "latch")
+SIGNALS = (*LINES, *DRIVES)
 #: The level bit that makes A, B and index X.
 UNKNOWN = 1 << 15
 CLEARANCE_PS = 2
@@ -52,7 +53,7 @@ class Stimulus:
         name, seed: what to repeat it by.
         period_ps: clock period P.
         lines: A, B and index.
-        drives: ``reset`` and the other inputs acted on, by the names of :data:`SIGNALS`.
+        drives: ``reset`` and the other inputs acted on, by the names of :data:`DRIVES`.
         ideal: the encoder's own edges, before disturbances.
         begin_ps: when the motion begins.
         lost_ps: from when the lines no longer tell where the shaft is, or None.
@@ -251,13 +252,17 @@ def compile_stimulus(profile: Profile, contract: Contract, seed: int, most_perio
     def play(some: dict[str, Line]) -> dict[str, Line]:
         return {name: Line(line.first, _folded(line.toggles_ps, unfold)) for name, line in some.items()}
 
+    drives = {
+        **play(drives),
+        "latch": _asking(contract, periods, played(begin_ps) // period_ps, generator(seed, profile.name, "latch")),
+    }
     ledger = replace(edges.ledger, time_ps=_folded(edges.ledger.time_ps, unfold))
     return Stimulus(
         profile.name,
         seed,
         period_ps,
         play(lines),
-        play(drives),
+        drives,
         replace(edges, lines=play(edges.lines), ledger=ledger),
         played(begin_ps),
         None if disturbed.lost_ps is None else played(disturbed.lost_ps),
@@ -293,6 +298,20 @@ def _drives(contract: Contract, scenario: Scenario, reset_clocks: int) -> dict[s
         release = np.array([reset_clocks * period_ps + period_ps // 2], dtype=np.int64)
         drives["reset"] = Line(1, np.concatenate([release, drives["reset"].toggles_ps]))
     return drives
+
+
+def _asking(contract: Contract, periods: int, begin: int, rng: np.random.Generator) -> Line:
+    """How a latch input is driven: all the time up to the period ``begin``, then at random: at every distance from an edge."""
+    latch = contract.input("latch")
+    if latch is None:
+        return Line(0, np.zeros(0, dtype=np.int64))
+    # By pairs: for how long it is asserted and then not.
+    early = np.ones((begin // 2, 2), dtype=np.int64) if latch.edge else np.array([[begin, 1]], dtype=np.int64)
+    rest = np.stack([rng.integers(1, 3, periods // 2 + 1), rng.integers(1, LATCH_GAP + 1, periods // 2 + 1)], axis=1)
+    toggles = np.concatenate([[0], np.cumsum(np.concatenate([early, rest]).reshape(-1))])
+    toggles = toggles[toggles < periods]
+    # Within a period, clear of its ends.
+    return Line(0, toggles * contract.clock.period_ps + contract.clock.period_ps // 3)
 
 
 def _through_aperture(line: Line, width_ps: int, period_ps: int, rng: np.random.Generator) -> Line:

@@ -150,19 +150,13 @@ class Entry:
 
         return self.convert(read, lowest)
 
-    def choice(self, allowed: Sequence[str], later: Sequence[str] = (), instead: str = "") -> str:
-        """One of ``allowed``.
-
-        A word of ``later`` is refused as not supported yet; ``instead`` says what else than a word may stand here.
-        """
+    def choice(self, allowed: Sequence[str], instead: str = "") -> str:
+        """One of ``allowed``; ``instead`` says what else than a word may stand here."""
 
         def read(text: str) -> str:
             if text in allowed:
                 return text
-            if text in later:
-                msg = f"{text!r} is not supported by this version of tbkit; supported: {one_of(allowed)}"
-            else:
-                msg = f"found {quoted(text)}, expected {one_of(allowed)}{instead}{nearest(text, allowed)}"
+            msg = f"found {quoted(text)}, expected {one_of(allowed)}{instead}{nearest(text, allowed)}"
             raise ValueError(msg)
 
         return self.convert(read, allowed[0])

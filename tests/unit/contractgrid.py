@@ -56,7 +56,7 @@ def contract(
     step: bool = False,
     error: str = "pulse",
     clear: bool = False,
-    illegal_holds: bool = True,
+    illegal_moves: tuple[int, ...] | None = (0, 0, 0, 0),
     index: Index | None = None,
     filtering: Filter | None = None,
     shortest: int = 1,
@@ -84,7 +84,7 @@ def contract(
         Direction(Output("direction", (Slice("dir"),)), forward_level, direction == "with-count") if direction else None,
         Step("pulse", (Output("step", (Slice("step"),)),)) if step else None,
         Error(Output("error", (Slice("err"),)), error) if error else None,
-        illegal_holds,
+        illegal_moves,
         index,
         filtering or Filter(),
         shortest,
@@ -215,8 +215,10 @@ def _grid() -> dict[str, tuple[Contract, tuple[Build, ...]]]:
     )
     add("majority", contract(4, filtering=Filter(1, 2, bursts_open=True), index=Index(0, 0)), Build("majority", 2, warm=4))
     # What follows an illegal transition.
-    add("any", contract(2, illegal_holds=False), *plain, Build(seed=5))
-    add("any-index", contract(2, illegal_holds=False, index=gated, direction="always", step=False))
+    add("any", contract(2, illegal_moves=None), *plain, Build(seed=5))
+    add("moves", contract(2, illegal_moves=(2, -1, 0, 1), direction="always"))
+    add("moves-range", contract((2, 4), illegal_moves=(-1, 1, 1, -1), step=True), Build(vary=True), Build())
+    add("any-index", contract(2, illegal_moves=None, index=gated, direction="always", step=False))
     add("no-error", contract(2, error="", direction=""))
     add("sticky", contract(2, error="sticky"), *plain, Build(warm=8, seed=4))
     add("sticky-clear", contract(2, error="sticky", clear=True, reset="none"), *plain, Build(set_wins=False))

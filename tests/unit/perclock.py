@@ -359,7 +359,9 @@ def run(contract: Contract, stimulus: Stimulus, build: Build, fault: str = "") -
             if state != before:
                 edges += 1
             jump = rng.randint(-3, 3) if build.wild and hasty else 0
-            if illegal and not contract.illegal_holds:
+            if illegal and contract.illegal_moves:
+                step = contract.illegal_moves[int(before, 2)]
+            elif illegal:
                 jump += rng.randint(-2, 2)
             # --- faults in counting
             turned = way in (1, -1) and last_way == -way

@@ -50,10 +50,11 @@ def run(contract: Contract, stimulus: Stimulus, fault: str = "", seed: int = 0) 
     depth, input_depth = contract.latency.count.min, contract.latency.inputs.min
     by_index, disarm_depth = contract.latency.index.min, contract.latency.inputs.min
     roles = {one.role: one for one in contract.inputs}
-    now, direction, captured = rng.randint(count.lowest, count.highest), 0, 0
+    last, now, direction, captured = 0, rng.randint(count.lowest, count.highest), 0, 0
     logs = {name: _Log() for name in ("count", "direction", "index", "step")}
     pressed = dict.fromkeys(("zero", "preload"), False)
-    armed_zone = False
+    armed_zone = armed = pressed_arm = False
+    shown, asked = rng.randint(count.lowest, count.highest), False
 
     def at(name: str, k: int) -> int:
         return levels[name][max(k, 0)]
@@ -65,7 +66,7 @@ def run(contract: Contract, stimulus: Stimulus, fault: str = "", seed: int = 0) 
         # What stands in period k was decided by the edge that ends period k - 1.
         if contract.reset and (at("reset", k) if contract.reset.asynchronous else at("reset", k - 1)):
             now, direction, captured, step, home = contract.start.count, 0, 0, 0, 0
-            armed_zone = True
+            armed_zone, armed, shown = True, False, now if seed % 2 else shown
             if index is not None:
                 state, z = lines(k - by_index)
                 armed_zone = _zone(index, state, z)
@@ -91,6 +92,13 @@ def run(contract: Contract, stimulus: Stimulus, fault: str = "", seed: int = 0) 
                     zone = zone and not at("disarm", k - disarm_depth)
                 entered = zone and not armed_zone
                 armed_zone = zone
+                if "arm-once" in roles:
+                    pressed_arm = bool(at("arm", k - input_depth))
+                    armed |= pressed_arm
+                    entered = entered and (armed or fault == "always-armed")
+                    zone = entered
+                    if entered and fault != "armed-for-ever":
+                        armed = pressed_arm and bool(seed % 2)
                 if index.action == "set" and (entered if index.edge else zone):
                     target = index.value + (counted if index.counts_last and fault != "step-lost" else 0)
                 if index.action == "pulse":
@@ -109,7 +117,13 @@ def run(contract: Contract, stimulus: Stimulus, fault: str = "", seed: int = 0) 
                     target = one.value + (counted if keeps else 0)
                 pressed[deed] = on
             now = wrapped(contract, now + counted) if target is None else wrapped(contract, target)
-        logs["count"].put(k, now)
+        latch = bool(at("latch", k - input_depth))
+        if "latch" not in roles or fault == "latch-open":
+            shown = now
+        elif latch and not (asked and roles["latch"].edge and fault != "latch-transparent"):
+            shown = now if fault != "latch-late" else last
+        asked, last = latch, now
+        logs["count"].put(k, shown)
         logs["direction"].put(k, direction)
         logs["step"].put(k, step)
         logs["index"].put(k, captured if index is not None and index.action == "latch" else home)

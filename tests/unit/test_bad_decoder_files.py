@@ -33,7 +33,7 @@ COUNT_KEYS = "port, width, signed, resolution, at, forward, overflow, modulo, lo
 NAME = "expected an HDL name: a letter or _, then letters, digits, _ or $"
 KEYWORD = "which is a SystemVerilog keyword; expected an HDL name"
 CLOCKS = "a whole number from 0 to 1000000"
-ROLES = "constant, clear-error, clear-count, preload, enable or arm"
+ROLES = "constant, clear-error, clear-count, preload, enable, arm, arm-once or latch"
 UNSUPPORTED = "is not supported by this version of tbkit"
 
 
@@ -269,16 +269,11 @@ CASES = [
         inputs="{clr: {role: clear-error, value: 0}, more: {role: clear-error}}",
         error="{port: err, kind: sticky}",
     ),
-    case(
-        "later-role",
-        f"8: inputs.en.role: 'latch' {UNSUPPORTED}; supported: {ROLES}",
-        inputs="{en: {role: latch}}",
-    ),
     case("unknown-role", f"8: inputs.en.role: found 'on', expected {ROLES}", inputs="{en: {role: on}}"),
     case(
         "role-keys",
-        "8: inputs.en.sense: this has no meaning for an input with the role enable: `sense` belongs to clear-count and preload"
-        " inputs\n"
+        "8: inputs.en.sense: this has no meaning for an input with the role enable: `sense` belongs to clear-count, preload"
+        " and latch inputs\n"
         "8: inputs.en.width: this has no meaning for an input with the role enable: the tool drives it\n"
         "8: inputs.zero.resumes: this has no meaning for an input with the role clear-count: `resumes` belongs to enable inputs\n"
         "8: inputs.zero.step_together: `step_together` needs `sense: edge`; while the level lasts the count does not move",
@@ -304,6 +299,50 @@ CASES = [
         inputs="{clr: {role: clear-count}}",
     ),
     case("arm-without-index", "8: inputs: an arm input needs an `index` action", inputs="{arm: {role: arm}}"),
+    case("arm-once-without-index", "8: inputs: an arm-once input needs an `index` action", inputs="{arm: {role: arm-once}}"),
+    case(
+        "arm-once-by-level-and-range",
+        "7: latency: with an arm-once input the latencies `inputs` and `index` must be one number each\n"
+        "9: index: with an arm-once input the index acts once each time; write `sense: edge` for the index",
+        inputs="{arm: {role: arm-once}}",
+        index="{action: zero}",
+        latency="{count: 3, index: [3, 4]}",
+    ),
+    case(
+        "latch-of-no-count",
+        "6: latency.count: the decoder file has no `count`, so nothing has this latency; add that, or take this away\n"
+        "8: inputs: a latch input needs a `count` output, which it makes readable",
+        count=None,
+        step="{port: step, kind: pulse}",
+        inputs="{take: {role: latch}}",
+    ),
+    case(
+        "latch-with-what-it-hides",
+        "7: latency: with a latch input the latencies `count` and `inputs` must be one number each\n"
+        "9: direction: on a count that is read through a latch nobody sees when it moves; write `valid: always`, or leave it out",
+        inputs="{take: {role: latch}}",
+        direction="{port: dir, forward: 1, valid: with-count}",
+        latency="{count: [3, 4]}",
+    ),
+    case(
+        "latch-without-clock",
+        "8: inputs: a latch input needs a clock, without a tick",
+        clock="none",
+        inputs="{take: {role: latch}}",
+    ),
+    case(
+        "latch-and-index",
+        "7: latency: with a latch input the latency `index` must be that of `count`",
+        inputs="{take: {role: latch}}",
+        index="{action: zero}",
+        latency="{count: 3, index: 2}",
+    ),
+    case(
+        "latch-of-a-latch",
+        "9: index: the index cannot be checked to latch a count that is itself read through a latch",
+        inputs="{take: {role: latch}}",
+        index="{action: latch, port: captured}",
+    ),
     case(
         "wide-constant",
         "8: inputs.mode: found '5', expected a whole number from 0 to 1; a wider input is written {value: 5, width: 3}",
@@ -525,6 +564,19 @@ CASES = [
         index="{action: zero}",
     ),
     case("illegal-word", "8: illegal: found 'hold', expected a map with the key count", illegal="hold"),
+    case(
+        "illegal-other",
+        '8: illegal.count: found \'skip\', expected hold or any or moves such as {"00": 1, "11": 1, "01": -1, "10": -1}',
+        illegal="{count: skip}",
+    ),
+    case(
+        "illegal-moves",
+        "8: illegal.count.00: found '9', expected a whole number from -4 to 4\n"
+        "8: illegal.count.12: unknown key; allowed here: 00, 01, 10, 11\n"
+        "8: illegal.count: the key '10' is missing; write for example `10: 1`\n"
+        "8: illegal.count: the key '11' is missing; write for example `11: 1`",
+        illegal='{count: {"00": 9, "01": 0, "12": 1}}',
+    ),
     case("illegal-empty", "8: illegal: the key 'count' is missing; write for example `count: hold`", illegal="{}"),
     # ---- latency, filter and the rest
     case(

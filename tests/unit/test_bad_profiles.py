@@ -12,10 +12,10 @@ from tbkit.profile_file import read_profile
 TOP_KEYS = "profile, about, needs, power_up, seed, encoder, motion, disturb"
 ACTIONS = (
     "rest, move, return, sine, table, clicks, home, reverse, dither, illegal, walk, reset, clear, zero, preload, disable, disarm,"
-    " repeat"
+    " arm, repeat"
 )
 DISTURBANCES = (
-    "glitch, bounce, missing, stuck, swap, invert, together, reset, clear, zero, preload, disable, disarm, aperture, unknown"
+    "glitch, bounce, missing, stuck, swap, invert, together, reset, clear, zero, preload, disable, disarm, arm, aperture, unknown"
 )
 ENCODER = "preset, lines, pitch, start, index, delay, duty_error, phase_error, state_error, jitter, eccentricity, hysteresis"
 MOVE = "by, speed, accel, decel, jerk, start_speed, end_speed"
@@ -329,7 +329,7 @@ CASES = [
         "needs",
         "[cuont]",
         "@[0]: found 'cuont', expected count, direction, step, error, sticky-error, index, reset, no-reset, filter, clear-error,"
-        " clear-count, preload, enable or arm"
+        " clear-count, preload, enable, arm or arm-once"
         " (did you mean 'count'?)",
     ),
     other("power_up", "1", "@: found '1', expected false or true"),

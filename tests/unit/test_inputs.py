@@ -58,6 +58,15 @@ GRID = {
     "index-pulse": of(2, index=Index(0, None, action="pulse", output=out())),
     "arm": of(2, index=Index(1, 1), roles=(role("arm"),)),
     "arm-edge": of(2, 3, index=Index(1, 0, edge=True), roles=(role("arm"),)),
+    "arm-once": of(2, index=Index(1, 1, edge=True), roles=(role("arm-once"),)),
+    "arm-once-late": of(2, 4, index=Index(0, 1, edge=True, value=9), roles=(role("arm-once"), CLEAR), direction="always"),
+    "arm-once-pulse": of(2, index=Index(None, 1, action="pulse", output=out()), roles=(role("arm-once"),)),
+    "latch": of(3, roles=(role("latch"),), direction="always"),
+    "latch-edge": of(4, 2, roles=(role("latch", edge=True), CLEAR), direction="", step=True),
+    "latch-all": of(
+        3, index=Index(1, 1), roles=(role("latch"), CLEAR, LOAD, role("enable"), role("arm")), direction="always", width=5
+    ),
+    "latch-hold": of(2, roles=(role("latch", edge=True),), direction="", overflow="hold", limits=(-5, 9)),
     "arm-latch": of(3, index=Index(1, 1, action="latch", output=out(8)), roles=(role("arm"),)),
 }
 
@@ -76,7 +85,7 @@ def compiled(made: Contract, name: str, seed: int = 1) -> Stimulus | None:
         return None
 
 
-INPUT_PROFILES = ("zero", "preload", "disable", "disarm")
+INPUT_PROFILES = ("zero", "preload", "disable", "disarm", "arm")
 
 
 @pytest.mark.parametrize("name", GRID)
@@ -111,6 +120,14 @@ def test_every_input_profile_is_played() -> None:
         ("enable", "enable-late", {"count-extra", "count-lost"}),
         ("enable-late", "enable-late", {"count-extra", "count-lost"}),
         ("arm", "always-armed", {"index-false"}),
+        ("arm-once", "always-armed", {"index-false"}),
+        ("arm-once", "armed-for-ever", {"index-false"}),
+        ("arm-once-pulse", "armed-for-ever", {"index-false"}),
+        ("latch", "latch-open", {"early", "count-extra"}),
+        ("latch", "latch-late", {"late", "count-lost"}),
+        ("latch-edge", "latch-late", {"late", "count-lost"}),
+        ("latch-edge", "latch-transparent", {"count-extra"}),
+        ("latch-all", "inputs-ignored", {"input-wrong"}),
         ("arm-latch", "always-armed", {"index-false"}),
         ("index-latch", "latch-transparent", {"index-false", "capture-wrong"}),
         ("index-load-edge", "step-lost", {"count-wrong", "index-missed", "count-lost"}),
@@ -132,7 +149,7 @@ def test_faults(name: str, fault: str, kinds: set[str]) -> None:
 SPEEDS = st.sampled_from(["0.1 states/dwell", "0.3 states/dwell", "0.7 states/dwell", "1 states/dwell"]).map(
     lambda text: parse(text, "speed")
 )
-DEEDS = st.sampled_from(["zero", "preload", "disable", "disarm"])
+DEEDS = st.sampled_from(["zero", "preload", "disable", "disarm", "arm"])
 TIMES = st.sampled_from(["1 clocks", "2 clocks", "5 clocks", "3 dwell", "2 settle"]).map(lambda text: parse(text, "time"))
 ACTIONS = st.lists(
     st.one_of(
@@ -185,7 +202,7 @@ ENCODERS = st.builds(Encoder, st.sampled_from([2, 3, 8]), st.sampled_from(["00",
 )
 def test_random(name: str, seed: int, motion: list[Action], disturb: list[Disturbance], encoder: Encoder) -> None:
     made = GRID[name]
-    deeds = {"zero": "clear-count", "preload": "preload", "disable": "enable", "disarm": "arm"}
+    deeds = {"zero": "clear-count", "preload": "preload", "disable": "enable", "disarm": "arm", "arm": "arm-once"}
     has = {"reset", *(deed for deed, of_role in deeds.items() if made.input(of_role))}
     actions = tuple(action for action in motion if not isinstance(action, Drive) or action.signal in has)
     presses = tuple(press for press in disturb if isinstance(press, Press) and press.signal in has)
