@@ -22,6 +22,8 @@ DEEDS = {
     "arm": "arm-once",
 }
 
+#: What is called a clock of a decoder that has none.
+NO_CLOCK_PS = 1000
 #: The longest time, in clocks, in which the bench does not ask a count that is read through a latch.
 LATCH_GAP = 4
 

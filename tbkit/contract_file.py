@@ -13,6 +13,7 @@ from tbkit import units
 from tbkit.contract import (
     A_LEADS_B,
     BENCH,
+    NO_CLOCK_PS,
     Clock,
     Constant,
     Contract,
@@ -46,8 +47,6 @@ MOST_CLOCKS_A_TICK = 1_000_000
 CODES = ("00", "01", "10", "11")
 #: How far an illegal transition may move the count.
 MOST_MOVE = 4
-#: What is called a clock of a decoder that has none.
-NO_CLOCK_PS = 1000
 
 _KEYS = (
     "tbkit", "decoder", "clock", "reset", "start", "lines", "inputs", "count", "direction", "step", "error", "illegal",

@@ -15,9 +15,12 @@ from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from pathlib import Path
 
+import numpy as np
+
 from tbkit import units
 from tbkit.contract import (
     A_LEADS_B,
+    NO_CLOCK_PS,
     Clock,
     Constant,
     Contract,
@@ -25,6 +28,7 @@ from tbkit.contract import (
     Design,
     Direction,
     Error,
+    Input,
     Latency,
     Output,
     Port,
@@ -35,14 +39,17 @@ from tbkit.contract import (
     Step,
 )
 from tbkit.errors import InputError, Problem
+from tbkit.ordered import merged
 from tbkit.paces import LENGTHS, SPREAD, reset_clocks, reset_is_asynchronous, settle_clocks, shortest_state, try_pulses
 from tbkit.probe import GAP, Script, changes, probe, value_at
 from tbkit.rtl import Rtl, RtlPort, modules, read_rtl
 from tbkit.simulators import find
-from tbkit.trace import Series, Trace
+from tbkit.trace import Series, Trace, compressed
 from tbkit.yamltree import nearest
 
 RATE_MHZ = 100
+#: How often a count moves at least in the first motion; an x1 count does five times.
+_FEWEST = 4
 #: A count is driven past its ends if that takes no more clocks.
 _FARTHEST_CLOCKS = 2_000_000
 
@@ -56,23 +63,34 @@ _NAMES = {
     "direction": r"dir|^up$|fwd|forward|^cw$|^way$",
     "step": r"step|pulse|tick|^ce$|move",
     "error": r"err|fault|illegal|lost|bad|inval",
+    "up": r"^(count_?|step_?)?(up|inc|fwd|forward)(_n|_o|_out|_pulse|_step)?$",
+    "down": r"^(count_?|step_?)?(down|dn|dec|back|rev|backward)(_n|_o|_out|_pulse|_step)?$",
+    "latch": r"latch|capture|freeze|hold",
 }
 _PAIRS = r"^(i_|in_|enc_?|quad_?)?(ab|ba|lines|enc|quad|phases?)(_i|_in)?$"
 
 
 @dataclass(frozen=True, slots=True)
 class Roles:
-    """Ports by their roles; ``lines`` may be bits of a vector."""
+    """Ports by their roles; lines, index and outputs may be bits of a vector.
 
-    clock: RtlPort
+    Attributes:
+        clock: empty for a decoder without one.
+        latch: an input that is held so that the count can be read.
+    """
+
+    clock: str
     lines: tuple[Port, Port]
     reset: RtlPort | None = None
-    index: RtlPort | None = None
-    count: RtlPort | None = None
-    direction: RtlPort | None = None
-    step: RtlPort | None = None
-    error: RtlPort | None = None
+    index: Port | None = None
+    count: Output | None = None
+    signed: bool = False
+    direction: Output | None = None
+    steps: tuple[Output, ...] = ()
+    error: Output | None = None
+    latch: Port | None = None
     constants: tuple[Constant, ...] = ()
+    literals: tuple[str, ...] = ()
 
 
 @dataclass(slots=True)
@@ -86,7 +104,8 @@ class Draft:
         self.rows.append((key, text, how))
 
     def text(self, head: str) -> str:
-        width = max(len(f"{key}: {text}") for key, text, _ in self.rows)
+        # Long lines do not push the others' remarks away.
+        width = min(max(len(f"{key}: {text}") for key, text, _ in self.rows), 100)
         lines = [f"# {head}", "# How each line is known: measured, named (from a port's name) or assumed.", "tbkit: 1"]
         lines += [f"{f'{key}: {text}':{width}}  # {how}" for key, text, how in self.rows]
         lines += [f"# LOOK: {doubt}" for doubt in self.doubts]
@@ -107,7 +126,11 @@ def describe(sources: Sequence[Path], top: str | None, home: Path, given: Mappin
     roles = _roles(rtl, files[0], given)
     draft = Draft()
     names = ", ".join(_relative(path, home) for path in files)
-    draft.add("decoder", f"{{top: {design.top}, sources: [{names}]}}", "named")
+    folders = [
+        _relative(path, home) for path in design.include_dirs if any("`include" in file.read_text("utf-8") for file in files)
+    ]
+    include = f", include_dirs: [{', '.join(folders)}]" if folders else ""
+    draft.add("decoder", f"{{top: {design.top}, sources: [{names}]{include}}}", "named")
     with tempfile.TemporaryDirectory(prefix="tbkit-describe-") as folder:
         _Prober(design, roles, draft, Path(folder)).run()
     return draft.text(f"What tbkit found out about {design.top}; read it, mend it, then run tbkit verify on it.")
@@ -125,7 +148,7 @@ def _top(files: tuple[Path, ...], top: str | None) -> tuple[Rtl, Design]:
             found = ", ".join(tops) or "none that could be told"
             raise InputError([Problem(str(files[0]), 1, f"name the top module with --top; modules at the top: {found}")])
         top = tops[0]
-    design = Design(top, files, standard="08" if vhdl else "")
+    design = Design(top, files, () if vhdl else tuple(dict.fromkeys(file.parent for file in files)), standard="08" if vhdl else "")
     rtl = read_rtl(design)
     if not isinstance(rtl, Rtl):
         known = ", ".join(rtl) if rtl else "none that could be read"
@@ -144,59 +167,106 @@ def _roles(rtl: Rtl, file: Path, given: Mapping[str, str]) -> Roles:
         InputError: the clock, the lines or every output that counts cannot be told.
     """
     inputs = [port for port in rtl.ports if not port.is_output]
-    outputs = [port for port in rtl.ports if port.is_output]
-    by_name = {port.name: port for port in rtl.ports}
+    outputs = [part for port in rtl.ports if port.is_output for part in port.parts or (port,)]
+    by_name = {port.name: port for port in (*inputs, *outputs)}
     problems = []
-    for role, name in given.items():
+    for role, text in given.items():
         if role not in _NAMES:
             problems.append(
                 Problem("--role", 0, f"there is no role {role!r}; there are {', '.join(_NAMES)}{nearest(role, _NAMES)}")
             )
-        elif name.partition("[")[0] not in by_name:
-            ports = f"its ports are {', '.join(by_name)}{nearest(name, by_name)}"
-            problems.append(Problem("--role", 0, f"{rtl.top!r} has no port {name!r}; {ports}"))
+        elif (role, text) != ("clock", "none"):
+            ports = f"its ports are {', '.join(by_name)}"
+            problems += [
+                Problem("--role", 0, f"{rtl.top!r} has no port {name!r}; {ports}{nearest(name, by_name)}")
+                for name in (part.partition("[")[0] for part in text.split(","))
+                if name not in by_name
+            ]
     if problems:
         raise InputError(problems)
+    taken = {part.partition("[")[0] for text in given.values() for part in text.split(",")}
 
-    def one(role: str, among: list[RtlPort]) -> RtlPort | None:
-        if role in given:
-            return by_name[given[role].partition("[")[0]]
-        taken = {name.partition("[")[0] for name in given.values()}
-        return next((p for p in among if p.width == 1 and p.name not in taken and _matches(role, p.name)), None)
+    def named(role: str, among: list[RtlPort]) -> str:
+        """The port with a role, as it is given or as its name tells; empty if there is none."""
+        free = (p for p in among if p.width == 1 and p.name not in taken and _matches(role, p.name))
+        return given.get(role) or next((p.name for p in free), "")
 
-    single = {role: one(role, inputs) for role in ("clock", "reset")}
-    rest = [port for port in inputs if port not in single.values()]
-    index, a, b = (one(role, rest) for role in ("index", "a", "b"))
+    clock, reset = (named(role, inputs) for role in ("clock", "reset"))
+    rest = [port for port in inputs if port.name not in (clock, reset)]
+    index, a, b = (named(role, rest) for role in ("index", "a", "b"))
+    latch = named("latch", [port for port in rest if port.name not in (index, a, b)])
     pair = next((p for p in rest if p.width == 2 and re.search(_PAIRS, p.name.lower())), None)  # two lines
     lines: tuple[Port, Port] | None = None
     if a and b:
-        lines = (_line(given.get("a", a.name)), _line(given.get("b", b.name)))
+        lines = (_line(a), _line(b))
     elif pair:
         a_first = "ab" in pair.name.lower()
         lines = (Port(pair.name, int(a_first)), Port(pair.name, int(not a_first)))
-    wide = [p for p in outputs if (p.width or 0) >= 4]  # narrower is a state or flags
+    wide = [p for p in outputs if (p.width or 0) >= 4 and p.name not in taken]  # narrower is a state or flags
+    faults = next((p.name for p in wide if _matches("error", p.name)), "")
+    wide = [p for p in wide if p.name != faults]
     widest = max(wide, key=lambda p: p.width or 0, default=None)
-    count = by_name[given["count"]] if "count" in given else next((p for p in wide if _matches("count", p.name)), widest)
-    bits = {role: one(role, outputs) for role in ("direction", "step", "error")}
+    best = next((p for p in wide if _matches("count", p.name)), widest)
+    count = given.get("count", best.name if best else "")
+    bits = {role: named(role, outputs) for role in ("step", "error", "up", "down")}
+    both_ways = bool(bits["up"] and bits["down"])
+    step = "" if both_ways and "step" not in given else bits["step"]
+    flags = [p for p in outputs if not both_ways or p.name not in (bits["up"], bits["down"])]
+    states = next((p.name for p in flags if p.literals and _matches("direction", p.name)), "")
+    direction = named("direction", flags) or states
     for what, found, example in (
-        ("the clock", single["clock"], "clock=PORT"),
-        ("A and which B", lines, "a=PORT --role b=PORT"),
-        ("a count or a step", count or bits["step"], "count=PORT"),
+        ("the clock", clock, "clock=PORT` (or `clock=none`)"),
+        ("A and which B", lines, "a=PORT --role b=PORT`"),
+        ("a count or a step", count or step or both_ways, "count=PORT`"),
     ):
-        if found is None:
+        if not found:
             ports = ", ".join(port.name for port in rtl.ports)
-            text = f"which port is {what} cannot be told from the names {ports}; say it with `--role {example}`"
+            text = f"which port is {what} cannot be told from the names {ports}; say it with `--role {example}"
             problems.append(Problem(str(file), 1, text))
-    clock = single["clock"]
-    if clock is None or lines is None or problems:
+    if lines is None or problems:
         raise InputError(problems)
-    used = {clock.name, *(line.name for line in lines), *(p.name for p in (single["reset"], index) if p)}
+    used = {name.partition("[")[0] for name in (clock, reset, index, latch)} | {line.name for line in lines}
     constants = tuple(
         Constant(p.name, int(re.search(r"en|ce$|tick|strobe", p.name.lower()) is not None and not _is_low(p.name)), p.width or 1)
         for p in inputs
         if p.name not in used
     )
-    return Roles(clock, lines, single["reset"], index, count, bits["direction"], bits["step"], bits["error"], constants)
+    known = by_name.get(direction)
+    literals = known.literals if known else ()
+    told = _output("direction", direction, by_name)
+    return Roles(
+        "" if clock == "none" else clock,
+        lines,
+        by_name.get(reset),
+        replace(_line(index), active_low=_is_low(index.partition("[")[0])) if index else None,
+        _output("count", count, by_name),
+        bool(by_name[count].signed) if count in by_name else False,
+        replace(told, literal=literals[0]) if told and literals else told,
+        tuple(
+            output
+            for name, port in (
+                ("step", step),
+                ("up", both_ways and not step and bits["up"]),
+                ("down", both_ways and not step and bits["down"]),
+            )
+            if (output := _output(name, port or "", by_name))
+        ),
+        _output("error", bits["error"] or faults, by_name),
+        _line(latch) if latch else None,
+        constants,
+        literals,
+    )
+
+
+def _output(name: str, text: str, ports: Mapping[str, RtlPort]) -> Output | None:
+    """Ports or bits of them such as ``word[11:8],low[7:0]``, the most significant first; None for no text."""
+    slices, width = [], 0
+    for part in text.split(",") if text else []:
+        port, _, bits = part.rstrip("]").partition("[")
+        high, _, low = bits.partition(":")
+        slices.append(Slice(port, int(high), int(low or high)) if bits else Slice(port))
+        width += int(high) - int(low or high) + 1 if bits else ports[port].width or 1
+    return Output(name, tuple(slices), width) if slices else None
 
 
 def _line(text: str) -> Port:
@@ -210,10 +280,6 @@ def _is_low(name: str) -> bool:
     return re.search(r"(_n|_b|_ni|n_i)$|^n[a-z]|[a-z]n$", name.lower()) is not None and not name.lower().endswith("en")
 
 
-def _bit(name: str, port: RtlPort | None) -> Output | None:
-    return Output(name, (Slice(port.name),)) if port else None
-
-
 class _Prober:
     """Runs the experiments one after another, each with what those before have shown."""
 
@@ -221,29 +287,26 @@ class _Prober:
         self.design, self.roles, self.draft, self.folder = design, roles, draft, folder
         self.simulator = find("auto", design.language)[0]
         wide = Span(0, GAP)
-        count, width = roles.count, roles.count.width if roles.count else None
-        direction, step, error = (
-            _bit(name, port) for name, port in (("direction", roles.direction), ("step", roles.step), ("error", roles.error))
-        )
-        signed = bool(count and count.signed)
-        size = width or 1
+        signed, size = roles.signed, roles.count.width if roles.count else 1
         low, high = (-(1 << (size - 1)), (1 << (size - 1)) - 1) if signed else (0, (1 << size) - 1)
         self.contract = Contract(
             Path(f"{design.top}.yaml"),
             design,
-            Clock(roles.clock.name, units.PS_PER_S // (RATE_MHZ * 10**6)),
+            Clock(roles.clock, units.PS_PER_S // (RATE_MHZ * 10**6) if roles.clock else NO_CLOCK_PS),
             *roles.lines,
             Latency(wide, wide, wide, wide, wide, wide),
-            index_line=Port(roles.index.name) if roles.index else None,
+            index_line=roles.index,
             reset=Reset(Port(roles.reset.name), True, 4) if roles.reset else None,
             start=Start(),
             constants=roles.constants,
-            count=Count(Output("count", (Slice(count.name),), size), signed, 1, "00", True, "wrap", low, high) if count else None,
-            direction=Direction(direction, 1, with_count=True) if direction else None,
-            step=Step("pulse", (step,)) if step else None,
-            error=Error(error, "pulse") if error else None,
+            inputs=(Input(roles.latch, "latch"),) if roles.latch else (),
+            count=Count(roles.count, signed, 1, "00", True, "wrap", low, high) if roles.count else None,
+            direction=Direction(roles.direction, 1, with_count=True) if roles.direction else None,
+            step=Step("pulse", roles.steps) if roles.steps else None,
+            error=Error(roles.error, "pulse" if roles.error.width == 1 else "counter") if roles.error else None,
         )
         self.reset_on = 1
+        self.step_kind, self.step_idle = "", 0
         self.latency: dict[str, Span] = {}
 
     def script(self, state: str = "00") -> Script:
@@ -254,9 +317,12 @@ class _Prober:
 
     def main(self, trace: Trace) -> Series:
         """What shows a count: the count, or the steps."""
-        series = trace.count if trace.count is not None else trace.step
-        assert series is not None
-        return series
+        if trace.count is not None:
+            return trace.count
+        steps = [one for one in (trace.step, trace.up, trace.down) if one is not None]
+        if self.step_kind:
+            steps = [_total(one, self.step_kind, self.step_idle) for one in steps]
+        return steps[0] if len(steps) == 1 else _together(*steps)
 
     def run(self) -> None:
         self._reset()
@@ -271,7 +337,24 @@ class _Prober:
         self._write()
 
     def _reset(self) -> None:
-        """The level at which the reset port lets it count."""
+        """The level at which the reset port lets it count; if at none, that of a latch, or registers that begin at zero."""
+        moved = self._moves()
+        if max(moved.values()) < _FEWEST and self.roles.latch:
+            latch = replace(self.roles.latch, active_low=not self.roles.latch.active_low)
+            self.roles = replace(self.roles, latch=latch)
+            self.contract = replace(self.contract, inputs=(Input(latch, "latch"),))
+            moved = self._moves()
+        if max(moved.values()) < _FEWEST and self.design.language == "verilog":
+            self.contract = replace(self.contract, start=replace(self.contract.start, zeroed=True))
+            moved = self._moves()
+            self.draft.doubts.append("registers have neither a reset nor initial values: it counts only if they are 0 at power-up")
+        if max(moved.values()) < _FEWEST:
+            text = "it never counts in slow motion: is an enable input held at the wrong level, or are the lines others than these?"
+            raise InputError([Problem(str(self.design.sources[0]), 1, text)])
+        self.reset_on = max(moved, key=lambda level: moved[level])
+
+    def _moves(self) -> dict[int, int]:
+        """How often it counts in slow motion, for each level of the reset."""
         guess = 0 if self.roles.reset and _is_low(self.roles.reset.name) else 1
         moved: dict[int, int] = {}
         for level in (guess, 1 - guess) if self.roles.reset else (1,):
@@ -281,15 +364,15 @@ class _Prober:
             series = self.main(trace)
             answers = [clock for clock, _ in changes(series, 20, int(script.now)) if value_at(series, clock) is not None]
             moved[level] = len(answers)
-            if len(answers) >= 4:  # x1 counts five times here
+            if len(answers) >= _FEWEST:
                 break
-        if not max(moved.values()):
-            text = "it never counts in slow motion: is an enable input held at the wrong level, or are the lines others than these?"
-            raise InputError([Problem(str(self.design.sources[0]), 1, text)])
-        self.reset_on = max(moved, key=lambda level: moved[level])
+        return moved
 
     def _clock_edge(self) -> None:
         """Edges early and late in a clock: on the falling edge the early ones are answered a clock sooner."""
+        if not self.roles.clock:
+            self.draft.add("clock", "none", "named; times are ns")
+            return
         spans = []
         for phase in (0.2, 0.7):
             script = self.script()
@@ -300,7 +383,7 @@ class _Prober:
         falling = early.exact and late.exact and early.min + 1 == late.min
         if falling:
             self.contract = replace(self.contract, clock=replace(self.contract.clock, falling=True))
-        rate = f"{{port: {self.roles.clock.name}, rate: {RATE_MHZ} MHz, edge: {'falling' if falling else 'rising'}}}"
+        rate = f"{{port: {self.roles.clock}, rate: {RATE_MHZ} MHz, edge: {'falling' if falling else 'rising'}}}"
         self.draft.add("clock", rate, "named; the edge is measured, the rate assumed")
 
     def _start(self) -> None:
@@ -309,9 +392,8 @@ class _Prober:
         traces = probe(self.contract, self.simulator, self.folder, scripts, fresh=True)
         values = [value_at(self.main(trace), int(script.now)) for script, trace in zip(scripts, traces, strict=True)]
         moved = [
-            bool(
-                [1 for clock, _ in changes(self.main(trace), 24, int(script.now)) if value_at(self.main(trace), clock) is not None]
-            )
+            bool(_known_changes(self.main(trace), 20, int(script.now)))
+            or (trace.error is not None and bool(_known_changes(trace.error, 20, int(script.now))))
             for script, trace in zip(scripts, traces, strict=True)
         ]
         self.start_count = values[0] or 0
@@ -336,6 +418,13 @@ class _Prober:
         if not self.every or len(ups) * 2 != len(counted):
             self.draft.doubts.append(f"of 24 states forward it counts {len(ups)}, and back {len(counted) - len(ups)}")
             self.every = self.every or 1
+        if self.roles.steps and self.contract.step and len(self.roles.steps) > 1 and ups and trace.up is not None:
+            # Named up, and told while A leads B: otherwise they change places.
+            at = ups[2][0]
+            if not changes(trace.up, at - 1, at + GAP - 1):
+                up, down = (replace(one, name=name) for one, name in zip(reversed(self.roles.steps), ("up", "down"), strict=True))
+                self.roles = replace(self.roles, steps=(up, down))
+                self.contract = replace(self.contract, step=Step("pulse", (up, down)))
         if self.contract.count is not None and ups:
             was, became = value_at(series, ups[2][0] - 1), ups[2][4][-1][1]
             self.forward = "a-leads-b" if was is None or (became - was) % (1 << 32) == 1 else "b-leads-a"
@@ -389,14 +478,15 @@ class _Prober:
         (trace,) = self.play(script)
         main = self.main(trace)
         self.latency["count"] = self._span(main, script)
+        steps = trace.step if trace.step is not None else trace.up
         if trace.step is not None and trace.count is not None:
             self.latency["step"] = self._span(trace.step, script)
         sign = 1 if self.forward == "a-leads-b" else -1
         if trace.direction is not None:
             self._direction(trace.direction, main, script, sign)
-        if trace.step is not None:
-            self.step_idle = value_at(trace.step, script.edges[0][0] - 1) or 0
-            moves = changes(trace.step, 0, int(script.now))
+        if steps is not None:
+            self.step_idle = value_at(steps, script.edges[0][0] - 1) or 0
+            moves = changes(steps, 0, int(script.now))
             lasts = [then - now for (now, level), (then, _) in itertools.pairwise(moves) if level != self.step_idle]
             self.step_kind = "pulse" if lasts and max(lasts) == 1 else "toggle" if lasts and min(lasts) > GAP // 2 else "level"
 
@@ -458,16 +548,17 @@ class _Prober:
         self.latency["error"] = Span(min(delays), max(delays)) if delays else self.latency["count"]
         lasts = [one[1][0] - one[0][0] for one in told if len(one) > 1]
         self.error_kind = "pulse" if lasts and max(lasts) == 1 else "sticky"
-        if self.error_kind == "pulse" and len(told) < len(marks):
+        if self.contract.error and self.contract.error.kind == "counter":
+            self.error_kind = "counter"
+            self.error_holds = len(told) == (1 << self.contract.error.output.width) - 1 < len(marks)
+        elif self.error_kind == "pulse" and len(told) < len(marks):
             self.draft.doubts.append(f"only {len(told)} of {len(marks)} illegal transitions are reported")
 
     def _index(self) -> None:
         """In which states the index sets the count, and to what."""
-        low = self.roles.index is not None and _is_low(self.roles.index.name)
         scripts = []
         for n, state in enumerate(A_LEADS_B):
             script = self.script()
-            script.firsts["index"] = int(low)
             script.walk(24 + 4 * n).go_to(state).wait(GAP)
             script.mark("on")
             script.toggle("index")
@@ -475,7 +566,7 @@ class _Prober:
             script.mark("off")
             script.toggle("index")
             scripts.append(script.wait(2 * GAP))
-        self.index_low, hits, delays, values, self.index_edge = low, [], [], [], False
+        hits, delays, values, self.index_edge = [], [], [], False
         for state, script, trace in zip(A_LEADS_B, scripts, self.play(*scripts), strict=True):
             if trace.count is None:
                 continue
@@ -488,15 +579,14 @@ class _Prober:
         self.index_states, self.index_value = hits, values[0] if values and len(set(values)) == 1 else None
         if delays:
             self.latency["index"] = Span(min(delays), max(delays))
-            self._index_sense(low=low)
+            self._index_sense()
 
-    def _index_sense(self, *, low: bool) -> None:
+    def _index_sense(self) -> None:
         """Whether the index holds the count while it is active: moved on inside, or released from reset with it on."""
         inside = next((s for n, s in enumerate(A_LEADS_B) if {s, A_LEADS_B[(n + 1) % 4]} <= set(self.index_states)), None)
         scripts = []
         if inside is not None:
             script = self.script()
-            script.firsts["index"] = int(low)
             script.walk(20).go_to(inside).wait(GAP)
             script.toggle("index")
             script.wait(2 * GAP)
@@ -505,7 +595,7 @@ class _Prober:
             scripts.append(script.walk(4) if len(self.index_states) == len(A_LEADS_B) else script.walk(1).walk(-1))
         if self.start_count != self.index_value:
             script = self.script(self.index_states[0])
-            script.firsts["index"] = int(not low)
+            script.firsts["index"] = 1
             script.mark("released")
             scripts.append(script.wait(GAP))
         outside = next((n for n, s in enumerate(A_LEADS_B) if s not in self.index_states), None)
@@ -514,7 +604,6 @@ class _Prober:
             # Moved into the index, both ways: a step that is counted shows as one off.
             for way in (1, -1):
                 script = self.script()
-                script.firsts["index"] = int(low)
                 script.walk(20).go_to(A_LEADS_B[outside]).wait(GAP)
                 script.toggle("index")
                 script.wait(GAP)
@@ -549,18 +638,21 @@ class _Prober:
         states = "any" if len(self.rest_states) == len(A_LEADS_B) else f"[{', '.join(f'{state!r}' for state in self.rest_states)}]"
         count = f"count: {self.start_count}, " if roles.count else ""
         how = "measured; settle is assumed" if self.settle is None else "measured"
-        add("start", f"{{{count}rest_states: {states}, settle: {settle}}}", how)
+        zeroed = ", power_up: zero" if self.contract.start.zeroed else ""
+        add("start", f"{{{count}rest_states: {states}, settle: {settle}{zeroed}}}", how)
         a, b = (_line_text(line) for line in roles.lines)
         index = ""
         if roles.index:
-            index = f", index: {{port: {roles.index.name}, active: low}}" if self.index_low else f", index: {roles.index.name}"
+            index = f", index: {_line_text(roles.index)}"
         add("lines", f"{{a: {a}, b: {b}{index}}}", "named")
-        if roles.constants:
-            held = [
+        if roles.constants or roles.latch:
+            low = ", active: low" if roles.latch and roles.latch.active_low else ""
+            held = [f"{roles.latch.name}: {{role: latch{low}}}"] if roles.latch else []
+            held += [
                 f"{one.port}: {one.value}" if one.width == 1 else f"{one.port}: {{value: {one.value}, width: {one.width}}}"
                 for one in roles.constants
             ]
-            add("inputs", f"{{{', '.join(held)}}}", "assumed: held at these levels")
+            add("inputs", f"{{{', '.join(held)}}}", "assumed" + (": held at these levels" if roles.constants else ""))
         self._write_outputs()
         if not self.illegal_holds:
             add("illegal", "{count: any}", "measured: the count moves")
@@ -582,7 +674,7 @@ class _Prober:
         told = {main: self.latency["count"]}
         if self.roles.direction and self.latency["direction"] != told[main]:
             told["direction"] = self.latency["direction"]
-        if self.roles.count and self.roles.step and self.latency["step"] != told[main]:
+        if self.roles.count and self.roles.steps and self.latency["step"] != told[main]:
             told["step"] = self.latency["step"]
         for name in ("error", "index"):
             if name in self.latency and self.latency[name] != told[main]:
@@ -592,23 +684,28 @@ class _Prober:
     def _write_outputs(self) -> None:
         add, roles = self.draft.add, self.roles
         if roles.count:
-            signed = "true" if roles.count.signed else "false"
+            signed = "true" if roles.signed else "false"
             at = f', at: "{self.at}"' if self.every > 1 else ""
             add(
                 "count",
-                f"{{port: {roles.count.name}, width: {roles.count.width}, signed: {signed}, resolution: x{4 // self.every}{at},"
-                f" forward: {self.forward}{self._overflow()}}}",
+                f"{{port: {_output_text(roles.count)}, width: {roles.count.width}, signed: {signed},"
+                f" resolution: x{4 // self.every}{at}, forward: {self.forward}{self._overflow()}}}",
                 "measured",
             )
         if roles.direction:
             valid = "always" if self.always else "with-count"
-            add("direction", f"{{port: {roles.direction.name}, forward: {self.forward_level}, valid: {valid}}}", "measured")
-        if roles.step:
+            forward = roles.literals[0 if self.forward_level else 1] if roles.literals else str(self.forward_level)
+            add("direction", f"{{port: {_output_text(roles.direction)}, forward: {forward}, valid: {valid}}}", "measured")
+        if roles.steps:
             active = ", active: low" if self.step_idle and self.step_kind != "toggle" else ""
-            add("step", f"{{port: {roles.step.name}, kind: {self.step_kind}{active}}}", "measured")
-        if roles.error:
+            ports = ", ".join(f"{'port' if one.name == 'step' else one.name}: {_output_text(one)}" for one in roles.steps)
+            add("step", f"{{{ports}, kind: {self.step_kind}{active}}}", "measured")
+        if roles.error and self.error_kind == "counter":
+            holds = ", overflow: hold" if self.error_holds else ""
+            add("error", f"{{port: {_output_text(roles.error)}, kind: counter, width: {roles.error.width}{holds}}}", "measured")
+        elif roles.error:
             active = ", active: low" if self.error_idle else ""
-            add("error", f"{{port: {roles.error.name}, kind: {self.error_kind}{active}}}", "measured")
+            add("error", f"{{port: {_output_text(roles.error)}, kind: {self.error_kind}{active}}}", "measured")
 
     def _overflow(self) -> str:
         """What the count does at its ends, if they can be reached in reasonable time."""
@@ -655,6 +752,43 @@ class _Prober:
         sense += ", step_together: counted" if self.step_counts else ""
         how = "measured" if sense else "measured; where nothing speaks against it, it is taken to act as a level"
         self.draft.add("index", f"{{action: {action}{gated}{sense}}}", how)
+
+
+def _known_changes(series: Series, begin: int, end: int) -> list[tuple[int, int]]:
+    """Changes to values that are known."""
+    return [(clock, value) for clock, value in changes(series, begin, end) if value_at(series, clock) is not None]
+
+
+def _total(series: Series, kind: str, idle: int) -> Series:
+    """How often an output has told a step: in every clock of a pulse, at each change of a toggle, as a level rises."""
+    told = np.append(False, ~(series.unknown[1:] | series.unknown[:-1]))
+    if kind != "toggle":
+        told &= series.value != idle
+    lengths = (
+        np.diff(series.period, append=series.period[-1:] + 1)[told] if kind == "pulse" else np.ones(int(told.sum()), dtype=np.int64)
+    )
+    begins = np.repeat(series.period[told], lengths)
+    steps = begins + np.arange(len(begins)) - np.repeat(np.cumsum(lengths) - lengths, lengths)
+    return Series(np.append(0, steps), np.arange(len(steps) + 1), np.zeros(len(steps) + 1, dtype=bool))
+
+
+def _together(up: Series, down: Series) -> Series:
+    """Steps on two outputs as one series: up less down once they are totals."""
+    period = merged(up.period, down.period)
+    up_at, down_at = up.at(period), down.at(period)
+    return compressed(period, 2 * up.value[up_at] - 2 * down.value[down_at], up.unknown[up_at] | down.unknown[down_at])
+
+
+def _output_text(output: Output) -> str:
+    parts = [
+        one.port
+        if one.high is None
+        else f'"{one.port}[{one.high}]"'
+        if one.high == one.low
+        else f'"{one.port}[{one.high}:{one.low}]"'
+        for one in output.slices
+    ]
+    return parts[0] if len(parts) == 1 else f"[{', '.join(parts)}]"
 
 
 def _line_text(line: Port) -> str:

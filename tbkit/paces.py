@@ -117,9 +117,15 @@ def shortest_state(rig: Rig, gap: int) -> int | None:
         times = [script.marks["begin"][0], *script.marks["end"]]
         spans = [(one - 1, other - 1) for one, other in itertools.pairwise(times)]
         main, error = rig.main(trace), trace.error
+        base = value_at(main, times[0] - 1) or 0
+
+        def gone(clock: int) -> int | None:
+            """How far it has counted; where it stood before is an affair of what was played before."""
+            value = value_at(main, clock)
+            return None if value is None else value - base
+
         return [
-            (value_at(main, end), len(changes(main, begin, end)), len(changes(error, begin, end)) if error else 0)
-            for begin, end in spans
+            (gone(end), len(changes(main, begin, end)), len(changes(error, begin, end)) if error else 0) for begin, end in spans
         ]
 
     lengths = (*LENGTHS, gap)

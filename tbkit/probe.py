@@ -42,7 +42,7 @@ class Script:
 
     def begin(self, clocks: int = 20, rest: float = GAP) -> Script:
         """Asserts the reset for some ``clocks`` and lets the decoder ``rest``; call it first."""
-        self.firsts = {"a": int(self.state[0]), "b": int(self.state[1]), "reset": self.reset_on}
+        self.firsts = {"a": int(self.state[0]), "b": int(self.state[1]), "reset": self.reset_on, "latch": 1}
         self.now = clocks + PHASE
         self.toggles["reset"].append(self.now)
         self.now += rest

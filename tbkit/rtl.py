@@ -18,7 +18,7 @@ from pyslang.syntax import SyntaxTree
 from tbkit.contract import Contract, Design
 from tbkit.contract_check import uses_of_ports
 from tbkit.errors import Problem, SimulatorError
-from tbkit.vhdlports import BITS, VECTORS, read_ports
+from tbkit.vhdlports import BITS, INTEGERS, VECTORS, VhdlPort, VhdlType, read_ports
 from tbkit.yamltree import nearest
 
 _INPUTS = ("clock", "reset", "lines", "inputs")
@@ -29,9 +29,11 @@ class RtlPort:
     """A port as it is declared.
 
     Attributes:
-        width: None where it cannot be told.
+        width: None where it cannot be told; of an integer the bits that its range needs.
         bounds: the numbers of the leftmost and the rightmost bit, of a plain vector.
         optional: an input with a value of its own where it is left open.
+        parts: of a record, each named ``port.element``.
+        literals: of an enumeration.
     """
 
     name: str
@@ -41,6 +43,9 @@ class RtlPort:
     place: str
     bounds: tuple[int, int] | None = None
     optional: bool = False
+    parts: tuple[RtlPort, ...] = ()
+    literals: tuple[str, ...] = ()
+    is_integer: bool = False
 
 
 @dataclass(frozen=True, slots=True)
@@ -126,15 +131,24 @@ def _read_vhdl(design: Design) -> Rtl | None:
         known = read_ports(design)
     except SimulatorError:
         return None
-    ports = []
-    for one in known.values():
-        kind = one.type
-        bounds = None if kind.mark not in VECTORS or kind.left is None or kind.right is None else (kind.left, kind.right)
-        width = 1 if kind.mark in BITS else abs(bounds[0] - bounds[1]) + 1 if bounds else None
-        place = f"{Path(one.file).name}:{one.line}"
-        ports.append(RtlPort(one.name, one.mode in ("out", "buffer"), width, kind.mark == "signed", place, bounds, one.optional))
+    ports = [_vhdl_port(one.name, one.type, one) for one in known.values()]
     first = ports[0].place if ports else ""
     return Rtl(design.top, first, tuple(ports), tuple(name for name, _ in design.parameters))
+
+
+def _vhdl_port(name: str, kind: VhdlType, port: VhdlPort) -> RtlPort:
+    sides = None if kind.left is None or kind.right is None else (kind.left, kind.right)
+    bounds = sides if kind.mark in VECTORS else None
+    signed, width = kind.mark == "signed", 1 if kind.mark in BITS else None
+    if bounds:
+        width = abs(bounds[0] - bounds[1]) + 1
+    elif kind.mark in INTEGERS and sides:
+        signed = min(sides) < 0
+        width = max(max(sides).bit_length(), (-min(sides) - 1).bit_length() if signed else 1) + signed
+    parts = tuple(_vhdl_port(f"{name}.{element}", inner, port) for element, inner in kind.elements.items())
+    place = f"{Path(port.file).name}:{port.line}"
+    is_output = port.mode in ("out", "buffer")
+    return RtlPort(name, is_output, width, signed, place, bounds, port.optional, parts, kind.literals, kind.mark in INTEGERS)
 
 
 def check_against_rtl(contract: Contract) -> list[Problem]:
@@ -190,7 +204,7 @@ def _misfit(contract: Contract, rtl: Rtl, key: str, name: str, high: int | None,
     if port.is_output == (key in _INPUTS):
         kinds = ("an output", "an input") if port.is_output else ("an input", "an output")
         return _problem(contract, key, f"the port {base!r} ({port.place}) is {kinds[0]}, and {kinds[1]} is needed here")
-    if port.width is None or "." in name:
+    if port.width is None or port.is_integer or "." in name:
         return None
     if high is not None:
         text = _bit_misfit(port, high, driven=key in _INPUTS and contract.design.language != "vhdl")

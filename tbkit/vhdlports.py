@@ -21,7 +21,7 @@ class VhdlType:
 
     Attributes:
         mark: its name in lower case, with its library and package where it is the user's own.
-        left, right: bounds of a vector, None where they cannot be told; ``to``: they rise.
+        left, right: bounds of a vector or an integer, None where they cannot be told; ``to``: they rise.
         elements: of a record, by name.
         literals: of an enumeration.
     """
@@ -119,8 +119,8 @@ class _Reader:
         mark = mark_node.get("identifier", "unknown")
         if node.get("kind") == "selected_name" or mark not in (*BITS, *VECTORS, *INTEGERS):
             return self._own_type(mark_node)
-        bounds = node.find("index_constraint_list/el/range_constraint")
-        if mark in VECTORS and bounds is not None:
+        bounds = node.find("range_constraint" if mark in INTEGERS else "index_constraint_list/el/range_constraint")
+        if mark not in BITS and bounds is not None:
             left, right = (
                 None if side is None else self._value(side, self.generics)
                 for side in (bounds.find("left_limit_expr"), bounds.find("right_limit_expr"))

@@ -18,6 +18,18 @@ def simulator(request: pytest.FixtureRequest) -> Simulator:
     return need(marker.args[0])
 
 
+def pytest_terminal_summary(terminalreporter: pytest.TerminalReporter) -> None:
+    """How the lines of described decoders are known."""
+    rows = [
+        value for report in terminalreporter.getreports("passed") for name, value in report.user_properties if name == "described"
+    ]
+    if rows:
+        terminalreporter.section("lines of described decoders")
+        terminalreporter.write_line(f"{'':20} {'measured':>9} {'named':>6} {'assumed':>8}")
+        for row in sorted(map(str, rows)):
+            terminalreporter.write_line(row)
+
+
 @pytest.fixture(scope="session")
 def out(tmp_path_factory: pytest.TempPathFactory) -> Path:
     """One build folder for all tests, so that Verilator's run-time library is compiled once."""
