@@ -53,6 +53,7 @@ lint: $(READY)
 bench: $(READY)
 	$(BIN)/python tests/benchmark/stimulus.py
 	$(BIN)/python tests/benchmark/bench.py
+	PYTHONPATH=tests/simulator $(BIN)/python tests/benchmark/vhdl.py
 
 wheel: $(READY)
 	$(BIN)/python -m pip wheel --quiet --no-deps --wheel-dir dist .

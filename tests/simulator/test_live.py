@@ -32,8 +32,19 @@ PROFILES = (
     "zero",
     "preload",
     "disable",
+    "arm",
 )
-RIGHT = ("xor_form", "status_word", "index_latch", "loadable", "up_down_toggle", "no_clock", "set_wins")
+RIGHT = (
+    "xor_form",
+    "status_word",
+    "index_latch",
+    "loadable",
+    "up_down_toggle",
+    "no_clock",
+    "set_wins",
+    "latched_read",
+    "one_shot_index",
+)
 FAULTY = (
     "direction-of-before-the-reversal",
     "toggle-lost-in-one-state",
@@ -79,7 +90,7 @@ def test_verilator(simulator: Simulator, tmp_path: Path, out: Path) -> None:
 
 
 @pytest.mark.simulator("ghdl")
-@pytest.mark.parametrize("stem", ["xor_form_vhdl", "step_direction_vhdl"])
+@pytest.mark.parametrize("stem", ["xor_form_vhdl", "step_direction_vhdl", "strobed_bytes_vhdl"])
 def test_ghdl(stem: str, simulator: Simulator, tmp_path: Path, out: Path) -> None:
     assert not agree(read_contract(DECODERS / f"{stem}.yaml"), simulator, tmp_path, out)
 

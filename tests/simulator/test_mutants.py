@@ -48,11 +48,11 @@ def test_same_findings_in_two_languages(verilog: str, vhdl: str, simulator: Simu
     """The same fault in the same decoder gives the same findings, whatever the language."""
     by_name = {mutant.name: mutant for mutant in MUTANTS}
     scores = []
-    for name, on in ((verilog, find("icarus")[0]), (vhdl, simulator)):
-        contract = mutated(by_name[name], tmp_path / name)
+    for name, on in ((verilog, find("icarus")[0]), (verilog, find("verilator")[0]), (vhdl, simulator)):
+        contract = mutated(by_name[name], tmp_path / name / on.name)
         results = play(contract, short_part(contract), on, out)
         scores.append([(profile.name, profile.score) for profile in results.profiles])
-    assert scores[0] == scores[1]
+    assert scores[0] == scores[1] == scores[2]
     assert any(score is not None and score.findings for _, score in scores[0])
 
 
