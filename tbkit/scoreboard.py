@@ -8,12 +8,13 @@ count is one finding.
 from __future__ import annotations
 
 from collections import Counter
-from dataclasses import dataclass, field, fields, replace
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 
 from tbkit.contract import Contract, Error, Span
 from tbkit.counting import counted, into_range
+from tbkit.due import Due, apart, due_counts
 from tbkit.expectation import Bools, Epoch, Events, Expectation, Hold, Int64s
 from tbkit.findings import Finding, Score
 from tbkit.shaftoracle import Rests
@@ -75,30 +76,6 @@ class _Book:
         self.worst = clocks if self.worst is None else max(self.worst, clocks)
 
 
-@dataclass(frozen=True, slots=True)
-class _Due:
-    """Changes that are due on one output within one epoch, one after another.
-
-    ``absolute``: the count is set, ``by_input`` or by the index. ``on_the_way``: the step alone may be seen before the index sets
-    the count. ``optional``: may come after the epoch's end. ``first``: the first of several events that show at once.
-    """
-
-    earliest: Int64s
-    latest: Int64s
-    value: Int64s
-    step: Int64s
-    absolute: Bools
-    by_input: Bools
-    on_the_way: Bools
-    optional: Bools
-    event: Int64s
-    first: Int64s
-
-    def some(self, chosen: Int64s | Bools) -> _Due:
-        """Some of them."""
-        return _Due(*(getattr(self, one.name)[chosen] for one in fields(self)))
-
-
 def judge(contract: Contract, stimulus: Stimulus, expectation: Expectation, rests: Rests, trace: Trace) -> Score:
     """Compare a trace with what both oracles allow."""
     book = _Book(contract, stimulus, expectation.events)
@@ -156,57 +133,6 @@ def _into_range(contract: Contract, value: int) -> int:
     return into_range(contract.count, value)
 
 
-def _apart(contract: Contract) -> bool:
-    """Whether the index may answer at another time than the count does."""
-    return contract.latency.count != contract.latency.index or not contract.latency.count.exact
-
-
-def _due_counts(contract: Contract, expectation: Expectation, epoch: Epoch, base: int) -> _Due:
-    """The count changes that are due in an epoch."""
-    events = expectation.events
-    assert contract.count is not None
-    chosen = slice(epoch.first, epoch.last)
-    step, sets, leaves = events.step[chosen], events.sets[chosen], events.leaves_index[chosen]
-    value = counted(contract.count, step, sets, events.to[chosen], base)
-    before = np.concatenate([[base], value[:-1]]).astype(np.int64) if len(value) else value
-    by_count, by_index = contract.latency.count, contract.latency.index
-    period = events.period[chosen]
-    # A count that the index holds is let go when the index is seen to have ended, but before the next step.
-    index = contract.index
-    slowly = leaves & (index is not None and index.action == "set" and not index.edge)
-    let_go = np.minimum(max(by_count.max, by_index.max), np.append(np.diff(period), by_index.max + 1) + by_count.min - 1)
-    by_input = events.by_input[chosen]
-    earliest = period + np.where(sets & ~by_input, by_index.min, by_count.min)
-    latest = period + np.where(sets & ~by_input, by_index.max, np.where(slowly, np.maximum(let_go, by_count.max), by_count.max))
-    # Counted first, set a little later: the step alone may be seen on the way.
-    on_the_way = events.enters_index[chosen] & sets & ~by_input & (step != 0) & _apart(contract)
-    earliest = np.where(on_the_way, period + min(by_count.min, by_index.min), earliest)
-    event = np.arange(epoch.first, epoch.last)
-    due = _Due(earliest, latest, value, step, sets, by_input, on_the_way, latest > epoch.end, event, event)
-    if expectation.answered is not None:
-        due, before = _at_answers(due, before, expectation.answered, epoch.end)
-    return due.some((due.value != before) | due.on_the_way)
-
-
-def _at_answers(due: _Due, before: Int64s, answered: Int64s, end: int) -> tuple[_Due, Int64s]:
-    """What is due on a port that shows the count only now and then, and the count before each; those not shown are left out."""
-    turn = np.searchsorted(answered, due.latest)
-    many = int(np.searchsorted(turn, len(answered)))
-    due, before, turn = due.some(np.arange(len(turn)) < many), before[:many], turn[:many]
-    if many == 0:
-        return due, before
-    begins = np.append(True, turn[1:] != turn[:-1])
-    first, last = np.flatnonzero(begins), np.flatnonzero(np.append(begins[1:], True))
-    at = answered[turn[last]]
-    step, absolute = np.add.reduceat(due.step, first), np.logical_or.reduceat(due.absolute, first)
-    # At the ends of a count that holds there, steps do not add up.
-    absolute |= np.abs(step) > np.abs(due.value[last] - before[first])
-    found = due.some(last)
-    return replace(found, earliest=at, latest=at, step=step, absolute=absolute, optional=at > end, first=due.event[first]), before[
-        first
-    ]
-
-
 def _count(book: _Book, expectation: Expectation, rests: Rests, series: Series) -> tuple[Int64s, Int64s] | None:
     """Check the count; returns (period of the change, event) of every change that was rightly made."""
     contract, epochs = book.contract, expectation.epochs
@@ -225,7 +151,7 @@ def _count(book: _Book, expectation: Expectation, rests: Rests, series: Series) 
         if epoch.base == "carry" and carried is not None:
             carried = _carried(contract, expectation.events, done, epoch.first, carried)
         base = _base(book, epoch, seen, carried)
-        due = _due_counts(contract, expectation, epoch, base)
+        due = due_counts(contract, expectation, epoch, base)
         changes = _changes_within(series, epoch.begin, epoch.end)
         when, value = series.period[changes], series.value[changes]
         book.comparisons += len(due.value)
@@ -235,7 +161,7 @@ def _count(book: _Book, expectation: Expectation, rests: Rests, series: Series) 
             event = due.event[: len(when)]
             if len(when):
                 book.saw_latency(int((when - expectation.events.period[event]).max()))
-            by_step = ~due.absolute[: len(when)] | (~due.by_input[: len(when)] & (not _apart(contract)))
+            by_step = ~due.absolute[: len(when)] | (~due.by_input[: len(when)] & (not apart(contract)))
             periods.append(when[by_step])
             matched.append(event[by_step])
             shown = len(when)
@@ -288,7 +214,7 @@ def _carried(contract: Contract, events: Events, done: int, first: int, base: in
     return int(path[-1]) if len(path) else base
 
 
-def _exactly(due: _Due, when: Int64s, value: Int64s) -> bool:
+def _exactly(due: Due, when: Int64s, value: Int64s) -> bool:
     """Whether the changes are the due ones, one for one; the last ones may not have come yet."""
     many = len(when)
     return many <= len(due.value) and bool(
@@ -299,7 +225,7 @@ def _exactly(due: _Due, when: Int64s, value: Int64s) -> bool:
     )
 
 
-def _compare(book: _Book, due: _Due, when: list[int], value: list[int], seen: int, base: int) -> tuple[list[tuple[int, int]], int]:
+def _compare(book: _Book, due: Due, when: list[int], value: list[int], seen: int, base: int) -> tuple[list[tuple[int, int]], int]:
     """Name what differs; the same values at other times are late or early, whatever else they could be taken for."""
     many = len(when)
     if seen != base or many != len(due.value) or (np.array(value) != due.value).any():
@@ -321,7 +247,7 @@ def _compare(book: _Book, due: _Due, when: list[int], value: list[int], seen: in
     return right, many
 
 
-def _walk(book: _Book, due: _Due, when: list[int], value: list[int], seen: int) -> tuple[list[tuple[int, int]], int]:
+def _walk(book: _Book, due: Due, when: list[int], value: list[int], seen: int) -> tuple[list[tuple[int, int]], int]:
     """Follow the changes one by one; every difference is a finding.
 
     Returns the changes that are right and made by a step, as (clock, event), and how many of the due ones were dealt with.
@@ -332,7 +258,7 @@ def _walk(book: _Book, due: _Due, when: list[int], value: list[int], seen: int) 
     earliest, latest, steps = due.earliest.tolist(), due.latest.tolist(), due.step.tolist()
     absolute, optional, events = due.absolute.tolist(), due.optional.tolist(), due.event.tolist()
     values, by_input = due.value.tolist(), due.by_input.tolist()
-    apart = _apart(contract)
+    index_apart = apart(contract)
     periods = book.events.period
     e = c = 0
     now = seen
@@ -380,7 +306,7 @@ def _walk(book: _Book, due: _Due, when: list[int], value: list[int], seen: int) 
             now = value[c]
             c += 1
         elif value[c] == target:
-            if not (by_input[e] or (absolute[e] and apart)):
+            if not (by_input[e] or (absolute[e] and index_apart)):
                 right.append((when[c], events[e]))
             book.saw_latency(int(when[c] - periods[events[e]]))
             now = value[c]
