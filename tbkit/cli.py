@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import argparse
+import json
 import sys
 from collections.abc import Sequence
 from pathlib import Path
@@ -11,7 +12,7 @@ from typing import Self
 from rich.console import Console
 from rich.markup import escape
 
-from tbkit import __version__, report
+from tbkit import __version__, report, standalone
 from tbkit.contract_file import read_contract
 from tbkit.describe import describe
 from tbkit.errors import InputError, Problem, SimulatorError, UnfitError
@@ -74,6 +75,19 @@ def _parser() -> argparse.ArgumentParser:
         "-o", "--output", type=_picture, metavar="FILE", help="where to draw it: .png or .svg; or .vcd for a wave viewer"
     )
     plot.add_argument("--seed", type=_seed, default=1, metavar="N", help="for everything that is random (default: 1)")
+    render = commands.add_parser(
+        "render",
+        help="write a bench that checks the decoder in any simulator, without Python",
+        description="Writes a folder with a self-checking bench, and the stimulus and expectation of every profile.",
+    )
+    render.add_argument("decoder", metavar="DECODER", type=Path, nargs="?", help="decoder file (YAML)")
+    render.add_argument("profiles", metavar="PROFILE", type=Path, nargs="*", help="your own profiles, beside the built-in ones")
+    render.add_argument("-o", "--output", metavar="DIR", type=Path, help="the folder to write")
+    render.add_argument("--seed", type=_seed, default=1, metavar="N", help="for everything that is random (default: 1)")
+    render.add_argument(
+        "--only", action="append", default=[], metavar="NAME", help="take only this profile; may be given several times"
+    )
+    render.add_argument("--check", metavar="DIR", type=Path, help="write nothing; say whether this folder is up to date")
     found = commands.add_parser(
         "describe",
         help="find out what a decoder does, and write its decoder file",
@@ -183,6 +197,84 @@ def _verify(options: argparse.Namespace, console: Console, complain: Console) ->
     return EXIT_INPUT if "error" in verdicts else EXIT_PASS
 
 
+def _render(options: argparse.Namespace, console: Console) -> int:
+    if options.check:
+        return _check_folder(options.check, console)
+    if options.decoder is None or options.output is None:
+        text = "name the decoder file and the folder to write: tbkit render DECODER -o DIR; or a folder to check: --check DIR"
+        raise InputError([Problem("render", 0, text)])
+    files, left_out = _rendered(options.decoder, options.profiles, options.only, options.seed, options.output)
+    for name, text in files.items():
+        path = options.output / name
+        path.parent.mkdir(parents=True, exist_ok=True)
+        path.write_text(text, "utf-8")
+    for name, reason in left_out:
+        console.print(f"  left out, {reason}: {name}", markup=False)
+    console.print(f"wrote {len(files)} files to {options.output}; its README.txt says how to run them", markup=False)
+    return EXIT_PASS
+
+
+def _rendered(
+    decoder: Path, own: Sequence[Path], only: Sequence[str], seed: int, home: Path
+) -> tuple[dict[str, str], list[tuple[str, str]]]:
+    """The files of a rendered folder, and the profiles that are left out with the reason.
+
+    Raises:
+        InputError: with the problems of the files.
+    """
+    contract, profiles = read_contract(decoder), _profiles(own, only)
+    problems = check_against_rtl(contract)
+    planned = plan(contract, profiles, seed)
+    left_out = [(one.name, one.reason) for one in planned.left_out]
+    if not planned.stimuli:
+        problems.append(Problem(str(decoder), 1, "no profile is left to render for this decoder"))
+    if problems:
+        raise InputError(problems)
+    try:
+        files = standalone.render_folder(contract, profiles, planned.stimuli, home)
+    except UnfitError as error:
+        raise InputError([Problem(str(decoder), 1, str(error))]) from error
+    request = {
+        "decoder": standalone.relative(decoder, home),
+        "profiles": [standalone.relative(path, home) for path in own],
+        "only": list(only),
+        "seed": seed,
+    }
+    files[standalone.MANIFEST] = standalone.manifest(files, request)
+    return files, left_out
+
+
+def _check_folder(home: Path, console: Console) -> int:
+    """Whether a folder is what would be rendered now.
+
+    Raises:
+        InputError: it is not, with every file that differs, or it was not rendered by tbkit.
+    """
+    place = home / standalone.MANIFEST
+    try:
+        request = json.loads(place.read_text("utf-8"))["request"]
+        own, only, seed = [home / path for path in request["profiles"]], request["only"], request["seed"]
+        decoder = home / request["decoder"]
+    except (OSError, ValueError, KeyError, TypeError) as error:
+        raise InputError([Problem(str(place), 0, "this is no folder that tbkit has rendered")]) from error
+    files, _ = _rendered(decoder, own, only, seed, home)
+    there = {path.relative_to(home).as_posix() for path in home.glob(f"{standalone.VECTORS}/*")} | set(files)
+    problems = []
+    for name in sorted(there):
+        path = home / name
+        if name not in files:
+            problems.append(Problem(str(path), 0, "would not be rendered any more"))
+        elif not path.is_file():
+            problems.append(Problem(str(path), 0, "is missing"))
+        elif path.read_bytes() != files[name].encode():
+            problems.append(Problem(str(path), 0, "is not what would be rendered now"))
+    if problems:
+        again = f"render it again: tbkit render {decoder} -o {home}"
+        raise InputError([*problems, Problem(str(home), 0, again)])
+    console.print(f"{home} is up to date: {len(files)} files", markup=False)
+    return EXIT_PASS
+
+
 def _describe(options: argparse.Namespace, console: Console) -> int:
     problems = [Problem(str(path), 0, "there is no such file") for path in options.sources if not path.is_file()]
     if problems:
@@ -277,6 +369,8 @@ def main(arguments: Sequence[str] | None = None) -> int:
         match options.command:
             case "plot":
                 return _plot(options, console)
+            case "render":
+                return _render(options, console)
             case "describe":
                 return _describe(options, console)
             case _:

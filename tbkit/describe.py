@@ -307,6 +307,7 @@ class _Prober:
         )
         self.reset_on = 1
         self.step_kind, self.step_idle = "", 0
+        self.forward_literal = roles.literals[0] if roles.literals else ""
         self.latency: dict[str, Span] = {}
 
     def script(self, state: str = "00") -> Script:
@@ -482,16 +483,30 @@ class _Prober:
         if trace.step is not None and trace.count is not None:
             self.latency["step"] = self._span(trace.step, script)
         sign = 1 if self.forward == "a-leads-b" else -1
-        if trace.direction is not None:
-            self._direction(trace.direction, main, script, sign)
+        if trace.direction is not None and not self._direction(trace.direction, main, script, sign):
+            # Of an enumeration, the first value may be none that it takes while it moves.
+            right = next((one for one in self.roles.literals[1:] if self._direction_is(one, script, sign)), None)
+            if right is None:
+                doubt = "the direction is not the same for every count of one way, near the clock in which it moves"
+                self.draft.doubts.append(doubt)
         if steps is not None:
             self.step_idle = value_at(steps, script.edges[0][0] - 1) or 0
             moves = changes(steps, 0, int(script.now))
             lasts = [then - now for (now, level), (then, _) in itertools.pairwise(moves) if level != self.step_idle]
             self.step_kind = "pulse" if lasts and max(lasts) == 1 else "toggle" if lasts and min(lasts) > GAP // 2 else "level"
 
-    def _direction(self, direction: Series, main: Series, script: Script, sign: int) -> None:
-        """The level going forward, in which clock beside the count's, and whether it stays."""
+    def _direction_is(self, literal: str, script: Script, sign: int) -> bool:
+        """Whether an output that is an enumeration has this value going forward."""
+        assert self.contract.direction is not None
+        direction = replace(self.contract.direction, output=replace(self.contract.direction.output, literal=literal))
+        self.contract = replace(self.contract, direction=direction)
+        self.forward_literal = literal
+        (trace,) = self.play(script)
+        assert trace.direction is not None
+        return self._direction(trace.direction, self.main(trace), script, sign) and self.forward_level == 1
+
+    def _direction(self, direction: Series, main: Series, script: Script, sign: int) -> bool:
+        """The level going forward, in which clock beside the count's, and whether it stays; whether it tells the way at all."""
         counted = [
             (answers[0][0], way * sign)
             for clock, _, _, way in script.edges
@@ -503,8 +518,8 @@ class _Prober:
             if all(len(levels) == 1 for levels in told.values()) and told[1] != told[-1]:
                 self.direction_offset, self.forward_level = offset, next(iter(told[1])) or 0
                 break
+        tells = self.direction_offset is not None
         if self.direction_offset is None:
-            self.draft.doubts.append("the direction is not the same for every count of one way, near the clock in which it moves")
             self.direction_offset, self.forward_level = 0, 1
         reversals = sum(1 for (_, one), (_, other) in itertools.pairwise(counted) if one != other)
         span = self._span(direction, script)
@@ -514,6 +529,8 @@ class _Prober:
         self.latency["direction"] = (
             span if self.always else Span(at_count.min + self.direction_offset, at_count.max + self.direction_offset)
         )
+        # A value of an enumeration that is taken backward is told as that of the other way.
+        return tells and (self.forward_level == 1 or not self.roles.literals)
 
     @staticmethod
     def _span(series: Series, script: Script) -> Span:
@@ -694,7 +711,7 @@ class _Prober:
             )
         if roles.direction:
             valid = "always" if self.always else "with-count"
-            forward = roles.literals[0 if self.forward_level else 1] if roles.literals else str(self.forward_level)
+            forward = self.forward_literal if roles.literals else str(self.forward_level)
             add("direction", f"{{port: {_output_text(roles.direction)}, forward: {forward}, valid: {valid}}}", "measured")
         if roles.steps:
             active = ", active: low" if self.step_idle and self.step_kind != "toggle" else ""

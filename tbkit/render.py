@@ -7,6 +7,7 @@ read, and every value is turned into a sized literal here.
 from __future__ import annotations
 
 import hashlib
+from collections.abc import Mapping
 from importlib import resources
 
 import jinja2
@@ -154,7 +155,10 @@ def _context(contract: Contract) -> dict[str, object]:
     }
 
 
-def render_bench(contract: Contract) -> str:
-    """The text of the bench; the same contract gives the same bytes."""
-    context = _context(contract)
+def render_bench(contract: Contract, checks: Mapping[str, object] | None = None) -> str:
+    """The text of the bench; the same contract gives the same bytes.
+
+    ``checks``: what a bench that checks by itself is told (:mod:`tbkit.standalone`); None: one that tbkit plays on.
+    """
+    context = {**_context(contract), "checks": checks}
     return template("bench.sv.j2").render(digest=digest_of(context), **context)

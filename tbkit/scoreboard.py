@@ -40,9 +40,9 @@ class _Book:
     totals: Counter[str] = field(default_factory=Counter)
 
     def note_time(self, kind: str, output: str, clock: int, event: int, limit: int) -> None:
-        """An output that came at ``clock``, before or after the ``limit``."""
+        """An output that came at ``clock``, before or after the ``limit``: it is wrong from the first of both on."""
         cause = int(self.events.period[event])
-        self.note(kind, output, clock, event, f"after {limit - cause} clocks", f"after {clock - cause} clocks")
+        self.note(kind, output, min(clock, limit), event, f"after {limit - cause} clocks", f"after {clock - cause} clocks")
 
     def note(self, kind: str, output: str, clock: int, event: int, expected: int | str, found: int | str) -> None:
         self.totals[kind] += 1
@@ -173,9 +173,8 @@ def _count(book: _Book, expectation: Expectation, rests: Rests, series: Series) 
         carried = int(value[-1]) if len(value) else seen
         done = int(due.first[shown]) if shown < len(due.first) else epoch.last
     if due_total and not responses:
-        _silent(book, "count", expectation.events, epochs)
-    before = sum(book.totals.values())
-    _rest_counts(book, rests, series, quiet=before > 0)
+        _silent(book, "count", epochs)
+    _rest_counts(book, rests, series)
     return np.concatenate(periods), np.concatenate(matched)
 
 
@@ -351,24 +350,26 @@ def _index_near(book: _Book, clock: int) -> bool:
     return bool(first != last or (line.first + first) % 2)
 
 
-def _rest_counts(book: _Book, rests: Rests, series: Series, *, quiet: bool) -> None:
-    """The shaft oracle's part. With ``quiet`` what differs has been found already, and is only counted as compared."""
+def _rest_counts(book: _Book, rests: Rests, series: Series) -> None:
+    """The shaft oracle's part: what differs after the first finding about the count is its consequence."""
     book.comparisons += len(rests.period)
     seen = series.value[series.at(rests.period)]
-    wrong = np.flatnonzero(seen != rests.count)
-    if len(wrong) and not quiet:
+    first = min((finding.clock for finding in book.found), default=book.stimulus.periods)
+    wrong = np.flatnonzero((seen != rests.count) & (rests.period < first))
+    if len(wrong):
         n = wrong[0]
         book.note("count-wrong", "count at rest, from the shaft", int(rests.period[n]), -1, int(rests.count[n]), int(seen[n]))
 
 
-def _silent(book: _Book, output: str, events: Events, epochs: tuple[Epoch, ...]) -> None:
-    """An output that never moved: one finding says it better than a hundred."""
+def _silent(book: _Book, output: str, epochs: tuple[Epoch, ...]) -> None:
+    """An output that never moved: one finding, where the first change is missing, says it better than a hundred."""
     first = epochs[0].first
+    missing = [finding.clock for finding in book.found if finding.output == output]
     book.found = [finding for finding in book.found if finding.output != output]
     for kind in ("count-lost", "index-missed", "roll-over-wrong", "step-wrong", "error-missed"):
         if kind != "error-missed" or output == "error":
             book.totals.pop(kind, None)
-    book.note("no-response", output, int(events.period[first]) if first < len(events) else 0, first, "changes", "none")
+    book.note("no-response", output, min(missing, default=0), first, "changes", "none")
 
 
 # --- direction, step, error ----------------------------------------------------------------------------------------
@@ -463,7 +464,7 @@ def _pulses(
         seen = ups[np.searchsorted(ups, begin) : np.searchsorted(ups, epoch.end, side="right")]
         if output in ("step", "up", "down"):
             # While the index holds the count, a decoder may give a step for a motion or not.
-            free = _spread(events.sets[due], events.period[due], latency)
+            free = spread(events.sets[due], events.period[due], latency)
             may, wants = (_in_window(seen, events.period[chosen], latency) for chosen in (due[free], due[~free]))
             seen = seen[wants | ~may]
             due = due[~free]
@@ -483,7 +484,7 @@ def _pulses(
         right_period.append(np.array([clock for clock, _ in right], dtype=np.int64))
         right_event.append(np.array([event for _, event in right], dtype=np.int64))
     if due_total and not seen_total and output != "error":
-        _silent(book, output, events, epochs)
+        _silent(book, output, epochs)
     return np.concatenate(right_period), np.concatenate(right_event)
 
 
@@ -528,7 +529,7 @@ def _captured(book: _Book, series: Series, count: Series, expectation: Expectati
                 book.note("capture-wrong", "index", clock, event, int(count.value[last]), int(series.value[entry]))
 
 
-def _spread(free: Bools, causes: Int64s, latency: Span) -> Bools:
+def spread(free: Bools, causes: Int64s, latency: Span) -> Bools:
     """What is free makes those free whose answers can be taken for its own."""
     if len(free) == 0:
         return free
