@@ -260,17 +260,17 @@ def _check_folder(home: Path, console: Console) -> int:
     files, _ = _rendered(decoder, own, only, seed, home)
     there = {path.relative_to(home).as_posix() for path in home.glob(f"{standalone.VECTORS}/*")} | set(files)
     problems = []
+    again = f"; render it again: tbkit render {decoder} -o {home}"
     for name in sorted(there):
         path = home / name
         if name not in files:
-            problems.append(Problem(str(path), 0, "would not be rendered any more"))
+            problems.append(Problem(str(path), 0, f"would not be rendered any more{again}"))
         elif not path.is_file():
-            problems.append(Problem(str(path), 0, "is missing"))
+            problems.append(Problem(str(path), 0, f"is missing{again}"))
         elif path.read_bytes() != files[name].encode():
-            problems.append(Problem(str(path), 0, "is not what would be rendered now"))
+            problems.append(Problem(str(path), 0, f"is not what would be rendered now{again}"))
     if problems:
-        again = f"render it again: tbkit render {decoder} -o {home}"
-        raise InputError([*problems, Problem(str(home), 0, again)])
+        raise InputError(problems)
     console.print(f"{home} is up to date: {len(files)} files", markup=False)
     return EXIT_PASS
 

@@ -21,7 +21,7 @@ from tbkit.shaftoracle import Rests
 from tbkit.stimulus import Stimulus
 from tbkit.trace import Series, Trace
 
-#: Findings of one kind that are kept with all detail; the rest are counted.
+#: Findings of one kind about one output that are kept with all detail; the rest are counted.
 KEPT_PER_KIND = 10
 #: An output that is off by more clocks than this is not called late or early, but lost and come from elsewhere.
 MOST_OFF = 4
@@ -38,6 +38,7 @@ class _Book:
     worst: int | None = None
     found: list[Finding] = field(default_factory=list)
     totals: Counter[str] = field(default_factory=Counter)
+    kept: Counter[tuple[str, str]] = field(default_factory=Counter)
 
     def note_time(self, kind: str, output: str, clock: int, event: int, limit: int) -> None:
         """An output that came at ``clock``, before or after the ``limit``: it is wrong from the first of both on."""
@@ -46,7 +47,8 @@ class _Book:
 
     def note(self, kind: str, output: str, clock: int, event: int, expected: int | str, found: int | str) -> None:
         self.totals[kind] += 1
-        if self.totals[kind] <= KEPT_PER_KIND:
+        self.kept[kind, output] += 1
+        if self.kept[kind, output] <= KEPT_PER_KIND:
             time_ps = self.stimulus.unfold(clock * self.stimulus.period_ps)
             expected, found = self._shown(expected, output), self._shown(found, output)
             self.found.append(Finding(kind, time_ps, clock, output, expected, found, self.states(event, clock)))

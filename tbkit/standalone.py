@@ -61,9 +61,10 @@ def render_folder(contract: Contract, profiles: Sequence[Profile], stimuli: Sequ
         files[f"{BENCH}{suffix}"] = render_bench(contract, _checks(contract, stimuli, most, fatal=fatal))
     sources = [relative(path, home) for path in contract.design.sources]
     folders = [relative(path, home) for path in contract.design.include_dirs]
+    # The bench first: it tells the time scale, which a decoder without one takes on.
     lists = {"files.f": f"{BENCH}.sv", "files_2005.f": f"{BENCH}.v"}
     for name, bench in lists.items():
-        files[name] = "\n".join([*(f"+incdir+{folder}" for folder in folders), *sources, bench, ""])
+        files[name] = "\n".join([*(f"+incdir+{folder}" for folder in folders), bench, *sources, ""])
     files["README.txt"] = template("readme.txt.j2").render(
         version=__version__,
         file=contract.file.name,
@@ -173,6 +174,8 @@ def _checks(contract: Contract, stimuli: Sequence[Stimulus], most: int, *, fatal
         "profiles": [{"name": one.name, "alone": one.power_up and contract.reset is None} for one in stimuli],
         "seed": stimuli[0].seed,
         "fatal": fatal,
+        # Names of files and the like: a type of its own came with SystemVerilog.
+        "text": "string" if fatal else "reg [8*1024-1:0]",
     }
 
 

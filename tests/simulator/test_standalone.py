@@ -1,0 +1,257 @@
+"""The rendered folder, run without Python: right decoders pass, faulty ones fail where ``tbkit verify`` says they do."""
+
+from __future__ import annotations
+
+import json
+import os
+import re
+import subprocess
+from pathlib import Path
+
+import numpy as np
+import pyslang
+import pytest
+from harness import SOAK, decoder_files, mutated, play, short_part, told
+from mutants import EXAMPLES, MUTANTS, Mutant
+from pyslang.ast import Compilation
+from pyslang.syntax import SyntaxTree
+
+from tbkit.cli import main
+from tbkit.contract import BENCH, Contract
+from tbkit.contract_file import read_contract
+from tbkit.regression import builtin_profiles
+from tbkit.simulators import Simulator
+from tbkit.standalone import render_folder
+from tbkit.stimulus import SIGNALS
+from tbkit.verify import Plan
+
+#: The simulator's own words on what X at power-up means are no business of the bench.
+NEEDS_ZEROS = "zero_at_power_up"
+RIGHT = [
+    *(EXAMPLES / f"{name}.yaml" for name in ("spindle", "traverse", "knob")),
+    *(file for file in decoder_files("verilog") if file.stem != NEEDS_ZEROS),
+]
+#: Each time the examples, and some of the others; all with ``TBKIT_SOAK=1``.
+CHOSEN = RIGHT if SOAK else [*RIGHT[:3], *RIGHT[3::5]]
+FAULTY = [mutant for mutant in MUTANTS if not mutant.vhdl and mutant.stem != NEEDS_ZEROS]
+CHOSEN_FAULTY = FAULTY if SOAK else FAULTY[::9]
+
+_LINE = re.compile(
+    r"^(pass|fail)  (\S+): (?:\d+ of (\d+) checks, first at clock (\d+)|(\d+) checks|nothing was compared)$", re.MULTILINE
+)
+
+
+def written(contract: Contract, planned: Plan, folder: Path) -> Path:
+    for name, text in render_folder(contract, builtin_profiles(), planned.stimuli, folder).items():
+        path = folder / name
+        path.parent.mkdir(parents=True, exist_ok=True)
+        path.write_text(text, "utf-8")
+    return folder
+
+
+def run(command: list[str], folder: Path, simulator: Simulator, limit: float = 500) -> subprocess.CompletedProcess[str]:
+    """With as little of an environment as there can be: no Python in it."""
+    paths = dict(simulator.environment).get("PATH", os.environ["PATH"])
+    environment = {**dict(simulator.environment), "PATH": paths, "HOME": str(folder)}
+    return subprocess.run(command, cwd=folder, env=environment, capture_output=True, text=True, check=False, timeout=limit)
+
+
+def compiled(folder: Path, simulator: Simulator, *, form: str = "2012") -> None:
+    listed = "files.f" if form == "2012" else "files_2005.f"
+    done = run(["iverilog", f"-g{form}", "-s", BENCH, "-c", listed, "-o", "bench"], folder, simulator)
+    assert (done.returncode, done.stdout, done.stderr) == (0, "", "")
+    # Of the bench itself not even the pickiest of its warnings.
+    picky = run(["iverilog", f"-g{form}", "-Wall", "-s", BENCH, "-c", listed, "-o", "picky"], folder, simulator)
+    assert [line for line in picky.stderr.splitlines() if line.startswith(BENCH) and "warning" in line] == []
+
+
+def outcome(printed: str) -> dict[str, int | None]:
+    """For each profile the first clock at which something was wrong; None if nothing was."""
+    return {m[2]: None if m[1] == "pass" else int(m[4]) if m[4] else -1 for m in _LINE.finditer(printed)}
+
+
+def played(contract: Contract, folder: Path, simulator: Simulator, names: list[str]) -> tuple[int, str]:
+    """All profiles; those that begin at power-up, without a reset, one by one."""
+    done = run(["vvp", "-n", "bench", "+tbkit_folder=vectors"], folder, simulator)
+    printed, code = done.stdout, done.returncode
+    if contract.reset is None:
+        for name in [name for name in names if name not in outcome(printed)]:
+            done = run(["vvp", "-n", "bench", "+tbkit_folder=vectors", f"+profile={name}"], folder, simulator)
+            printed, code = printed + done.stdout, code or done.returncode
+    return code, printed
+
+
+@pytest.mark.simulator("icarus")
+@pytest.mark.parametrize("file", CHOSEN, ids=lambda file: file.stem)
+def test_right_decoders_pass(file: Path, simulator: Simulator, tmp_path: Path) -> None:
+    contract = read_contract(file)
+    planned = short_part(contract)
+    folder = written(contract, planned, tmp_path)
+    names = [stimulus.name for stimulus in planned.stimuli]
+    for form in (
+        ("2005", "2012") if contract.design.sources[0].suffix == ".v" and contract.design.language == "verilog" else ("2012",)
+    ):
+        compiled(folder, simulator, form=form)
+        code, printed = played(contract, folder, simulator, names)
+        assert outcome(printed) == dict.fromkeys(names), printed
+        assert code == 0
+        assert re.search(r"^PASS \d+ profiles, \d+ checks$", printed, re.MULTILINE)
+
+
+@pytest.mark.simulator("icarus")
+@pytest.mark.parametrize("mutant", CHOSEN_FAULTY, ids=lambda mutant: mutant.name)
+def test_faulty_decoders_fail_at_the_same_clock(mutant: Mutant, simulator: Simulator, tmp_path: Path, out: Path) -> None:
+    contract = mutated(mutant, tmp_path / "rtl")
+    planned = short_part(contract)
+    results = play(contract, planned, simulator, out)
+    expected = {
+        one.name: min((finding.clock for finding in one.findings), default=None)
+        for one in results.profiles
+        if one.score is not None
+    }
+    folder = written(contract, planned, tmp_path / "folder")
+    compiled(folder, simulator)
+    code, printed = played(contract, folder, simulator, list(expected))
+    assert outcome(printed) == expected, told(results)
+    assert code == 1
+    assert re.search(r"^FAIL \d+ of \d+ profiles, \d+ checks$", printed, re.MULTILINE)
+
+
+def diagnostics(files: list[Path]) -> str:
+    """What pyslang has to say about a full elaboration, with the warnings that it gives unasked."""
+    manager = pyslang.SourceManager()
+    compilation = Compilation()
+    compilation.addSyntaxTree(SyntaxTree.fromFiles([str(file) for file in files], manager))
+    engine, client = pyslang.DiagnosticEngine(manager), pyslang.TextDiagnosticClient()
+    engine.setWarningOptions(["default"])
+    engine.addClient(client)
+    for one in compilation.getAllDiagnostics():
+        engine.issue(one)
+    return client.getString()
+
+
+@pytest.mark.parametrize("file", RIGHT, ids=lambda file: file.stem)
+def test_pyslang_has_nothing_to_say(file: Path, tmp_path: Path) -> None:
+    contract = read_contract(file)
+    if contract.design.include_dirs:
+        pytest.skip("its sources include a file of their own")
+    planned = Plan(short_part(contract).stimuli[:1], ())
+    folder = written(contract, planned, tmp_path)
+    own = diagnostics(list(contract.design.sources))
+    assert diagnostics([folder / f"{BENCH}.sv", *contract.design.sources]).replace(own, "") == ""
+
+
+@pytest.mark.simulator("verilator")
+@pytest.mark.parametrize("name", ["spindle", "faulty_reversal"])
+def test_verilator(name: str, simulator: Simulator, tmp_path: Path, out: Path) -> None:
+    contract = read_contract(EXAMPLES / f"{name}.yaml")
+    planned = short_part(contract)
+    folder = written(contract, planned, tmp_path)
+    root = dict(simulator.environment).get("VERILATOR_ROOT")
+    program = ["perl", str(Path(root) / "bin" / "verilator")] if root else ["verilator"]
+    common = [*program, "--timing", "--assert", "--no-sched-zero-delay", "--top-module", BENCH, "-f", "files.f"]
+    lint = run([*common, "--lint-only"], folder, simulator)
+    assert f"{BENCH}.sv" not in lint.stderr
+    assert name != "spindle" or (lint.returncode, lint.stderr) == (0, "")
+    # The flags for the compiler are those that an old gcc and a wheel without precompiled headers need.
+    flags = ["-CFLAGS", "-std=c++20 -fcoroutines", "-MAKEFLAGS", "CFG_CXXFLAGS_PCH_I=-include CFG_GCH_IF_CLANG="]
+    done = run([*common, "--binary", "-Wno-fatal", *flags], folder, simulator)
+    assert done.returncode == 0, done.stderr
+    ran = run([f"obj_dir/V{BENCH}", "+tbkit_folder=vectors"], folder, simulator)
+    results = play(contract, planned, simulator, out)
+    expected = {
+        one.name: min((finding.clock for finding in one.findings), default=None)
+        for one in results.profiles
+        if one.score is not None
+    }
+    assert outcome(ran.stdout) == expected, ran.stdout
+    assert (ran.returncode != 0) == (results.verdict == "fail")
+
+
+@pytest.mark.simulator("icarus")
+def test_nothing_compared_fails(simulator: Simulator, tmp_path: Path) -> None:
+    """Expectations without a row, and a profile that there is not."""
+    contract = read_contract(EXAMPLES / "spindle.yaml")
+    planned = Plan(short_part(contract).stimuli[:1], ())
+    folder = written(contract, planned, tmp_path)
+    compiled(folder, simulator)
+    name = planned.stimuli[0].name
+    (file,) = (folder / "vectors").glob("*.expected")
+    file.write_text(file.read_text("utf-8").splitlines()[0] + "\n", "utf-8")
+    done = run(["vvp", "-n", "bench", "+tbkit_folder=vectors"], folder, simulator)
+    assert done.returncode == 1
+    assert f"fail  {name}: nothing was compared\nFAIL 1 of 1 profiles, 0 checks\n" in done.stdout
+    done = run(["vvp", "-n", "bench", "+tbkit_folder=vectors", "+profile=none"], folder, simulator)
+    assert done.returncode == 1
+    assert "FAIL no profile was run\n" in done.stdout
+
+
+def test_vectors_are_the_stimulus(tmp_path: Path) -> None:
+    """Read back by NumPy's own reader, every line is driven as the stimulus says."""
+    contract = read_contract(EXAMPLES / "traverse.yaml")
+    planned = short_part(contract)
+    folder = written(contract, planned, tmp_path)
+    for stimulus in planned.stimuli:
+        path = folder / "vectors" / f"{stimulus.name}.{stimulus.seed}.stimulus"
+        table = np.loadtxt(path, skiprows=1, converters={1: lambda text: int(text, 16)}, dtype=np.int64)
+        times, levels = np.cumsum(table[:, 0]), table[:, 1]
+        assert times[-1] == stimulus.periods * stimulus.period_ps
+        for bit, name in enumerate(SIGNALS):
+            line = {**stimulus.lines, **stimulus.drives}[name]
+            values = levels >> bit & 1
+            assert values[0] == line.first
+            changed = np.flatnonzero(np.diff(values)) + 1
+            np.testing.assert_array_equal(times[changed], line.toggles_ps)
+
+
+def test_the_same_input_gives_the_same_bytes_and_a_check_tells_changes(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch, capsys: pytest.CaptureFixture[str]
+) -> None:
+    monkeypatch.chdir(tmp_path)
+    for name in ("spindle.v", "spindle.yaml"):
+        (tmp_path / name).write_bytes((EXAMPLES / name).read_bytes())
+    words = ["render", "spindle.yaml", "--only", "reversals", "--only", "walk", "-o"]
+    assert main([*words, "one"]) == 0
+    assert main([*words, "two"]) == 0
+    capsys.readouterr()
+    one, two = ({path.relative_to(home): path.read_bytes() for path in home.rglob("*.*")} for home in (Path("one"), Path("two")))
+    assert one == two
+    assert len(one) == 10
+    assert main(["render", "--check", "one"]) == 0
+    assert capsys.readouterr().out == "one is up to date: 10 files\n"
+    (tmp_path / "spindle.yaml").write_text((EXAMPLES / "spindle.yaml").read_text("utf-8").replace("count: 6", "count: [5, 6]"))
+    (tmp_path / "one" / "vectors" / "more.1.stimulus").write_text("")
+    (tmp_path / "one" / "files.f").unlink()
+    assert main(["render", "--check", "one"]) == 2
+    told_of = capsys.readouterr().err.splitlines()
+    again = "; render it again: tbkit render one/../spindle.yaml -o one"
+    assert f"one/files.f: is missing{again}" in told_of
+    assert f"one/vectors/more.1.stimulus: would not be rendered any more{again}" in told_of
+    assert f"one/vectors/walk.1.expected: is not what would be rendered now{again}" in told_of
+    # Every file tells what it comes from, and none of them when.
+    for path in Path("two").rglob("*.*"):
+        text = path.read_text("utf-8")
+        assert "0.1.0" in text.splitlines()[0] or path.suffix in (".f", ".json")
+        assert not re.search(r"20\d\d-\d\d|\d\d:\d\d:\d\d", text)
+    assert json.loads(Path("two/manifest.json").read_text("utf-8"))["request"]["only"] == ["reversals", "walk"]
+
+
+@pytest.mark.parametrize(
+    ("words", "message"),
+    [
+        (
+            ["render"],
+            (
+                "render: name the decoder file and the folder to write: tbkit render DECODER -o DIR; or a folder to check:"
+                " --check DIR\n"
+            ),
+        ),
+        (["render", "--check", "nowhere"], "nowhere/manifest.json: this is no folder that tbkit has rendered\n"),
+    ],
+)
+def test_refusals(
+    words: list[str], message: str, tmp_path: Path, monkeypatch: pytest.MonkeyPatch, capsys: pytest.CaptureFixture[str]
+) -> None:
+    monkeypatch.chdir(tmp_path)
+    assert main(words) == 2
+    assert capsys.readouterr().err == message
