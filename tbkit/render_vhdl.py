@@ -6,6 +6,8 @@ identifiers when the decoder file was read, types as GHDL knows them, and litera
 
 from __future__ import annotations
 
+from collections.abc import Mapping
+
 from tbkit.contract import Contract, Output, Slice
 from tbkit.errors import InputError, Problem
 from tbkit.render import basics, digest_of, driven, template
@@ -133,8 +135,10 @@ def _own_marks(kind: VhdlType) -> list[str]:
     return [kind.mark, *inner] if "." in kind.mark else inner
 
 
-def render_vhdl(contract: Contract, known: dict[str, VhdlPort]) -> str:
+def render_vhdl(contract: Contract, known: dict[str, VhdlPort], checks: Mapping[str, object] | None = None) -> str:
     """The text of the bench; the same contract and ports give the same bytes.
+
+    ``checks``: what a bench that checks by itself is told (:mod:`tbkit.standalone`); None: one that tbkit plays on.
 
     Raises:
         InputError: ports of the decoder file do not fit the entity.
@@ -156,6 +160,7 @@ def render_vhdl(contract: Contract, known: dict[str, VhdlPort]) -> str:
     period_ps = clock.edge_ps
     context: dict[str, object] = {
         **basics(),
+        "checks": checks and {**checks, "period": vhdl_time(clock.period_ps)},
         "inputs": inputs,
         "ports": [{"name": port.name, "type": port.type.text} for port in ports.used.values()],
         "outputs": outputs,

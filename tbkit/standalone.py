@@ -8,7 +8,7 @@ from __future__ import annotations
 import hashlib
 import json
 import os
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from pathlib import Path
 
 import numpy as np
@@ -19,12 +19,17 @@ from tbkit.errors import UnfitError
 from tbkit.lineoracle import expect
 from tbkit.profile import Profile
 from tbkit.render import render_bench, template
+from tbkit.render_vhdl import render_vhdl
 from tbkit.rows import OPS, STREAMS, Row, direction_offset, rows
 from tbkit.shaftoracle import rests
 from tbkit.stimulus import SIGNALS, Stimulus
+from tbkit.vhdlports import read_ports
 
 #: The bench keeps what outputs were for so many clocks.
 MEMORY = 60
+#: Counts are held in so many bits: two more than the widest, so that a step beyond an end is one.
+BITS_67 = (1 << 67) - 1
+PS_PER_US = 10**6
 VECTORS = "vectors"
 MANIFEST = "manifest.json"
 
@@ -57,27 +62,39 @@ def render_folder(contract: Contract, profiles: Sequence[Profile], stimuli: Sequ
         name = f"{VECTORS}/{stimulus.name}.{stimulus.seed}"
         files[f"{name}.stimulus"] = _stimulus(head, stimulus)
         files[f"{name}.expected"] = "\n".join([f"{head}: stream op from to value step flags", *(row.text for row in expected), ""])
-    for suffix, fatal in ((".sv", True), (".v", False)):
-        files[f"{BENCH}{suffix}"] = render_bench(contract, _checks(contract, stimuli, most, fatal=fatal))
-    sources = [relative(path, home) for path in contract.design.sources]
-    folders = [relative(path, home) for path in contract.design.include_dirs]
-    # The bench first: it tells the time scale, which a decoder without one takes on.
-    lists = {"files.f": f"{BENCH}.sv", "files_2005.f": f"{BENCH}.v"}
-    for name, bench in lists.items():
-        files[name] = "\n".join([*(f"+incdir+{folder}" for folder in folders), bench, *sources, ""])
+    files |= _benches(contract, lambda fatal: _checks(contract, stimuli, most, fatal=fatal), home)
     files["README.txt"] = template("readme.txt.j2").render(
         version=__version__,
         file=contract.file.name,
         digest=digest(contract.file),
         bench=BENCH,
         top=contract.design.top,
-        signals=SIGNALS,
-        incdirs=folders,
-        sources=sources,
+        vhdl=contract.design.language == "vhdl",
+        standard=contract.design.standard,
         zeroed=contract.start.zeroed,
         seeds=sorted({stimulus.seed for stimulus in stimuli}),
     )
     return files
+
+
+def _benches(contract: Contract, checks: Callable[[bool], dict[str, object]], home: Path) -> dict[str, str]:
+    """The bench in each form, with its list of files; ``checks`` is told whether the form knows ``$fatal``.
+
+    Raises:
+        SimulatorError: GHDL, which reads the ports of VHDL, does not understand the sources.
+        InputError: ports of the decoder file do not fit them.
+    """
+    sources = [relative(path, home) for path in contract.design.sources]
+    if contract.design.language == "vhdl":
+        bench = render_vhdl(contract, read_ports(contract.design), checks(True))
+        return {f"{BENCH}.vhd": bench, "files.f": "\n".join([*sources, f"{BENCH}.vhd", ""])}
+    folders = [f"+incdir+{relative(path, home)}" for path in contract.design.include_dirs]
+    found: dict[str, str] = {}
+    for suffix, listed, fatal in ((".sv", "files.f", True), (".v", "files_2005.f", False)):
+        found[f"{BENCH}{suffix}"] = render_bench(contract, checks(fatal))
+        # The bench first: it tells the time scale, which a decoder without one takes on.
+        found[listed] = "\n".join([*folders, f"{BENCH}{suffix}", *sources, ""])
+    return found
 
 
 def manifest(files: dict[str, str], request: dict[str, object]) -> str:
@@ -115,8 +132,8 @@ def _rows(contract: Contract, stimulus: Stimulus) -> list[Row]:
 def _stimulus(head: str, stimulus: Stimulus) -> str:
     words = stimulus.words()
     waits, levels = (words >> np.uint64(16)).tolist(), (words & np.uint64(0xFFFF)).tolist()
-    lines = [f"{wait} {level:04x}" for wait, level in zip(waits, levels, strict=True)]
-    return "\n".join([f"{head}: wait in ps, levels of {' '.join(SIGNALS)} from bit 0", *lines, ""])
+    lines = [f"{wait // PS_PER_US} {wait % PS_PER_US} {level:04x}" for wait, level in zip(waits, levels, strict=True)]
+    return "\n".join([f"{head}: wait in us and ps, levels of {' '.join(SIGNALS)} from bit 0", *lines, ""])
 
 
 def _pulse(output: Output, kind: str, *, holds: bool = False) -> dict[str, object]:
@@ -126,6 +143,9 @@ def _pulse(output: Output, kind: str, *, holds: bool = False) -> dict[str, objec
         "kind": kind,
         "up": "1'b0" if output.active_low else "1'b1",
         "down": "1'b1" if output.active_low else "1'b0",
+        "width": output.width,
+        "up_level": int(not output.active_low),
+        "down_level": int(output.active_low),
         "has_free": output.name in ("step", "up", "down"),
         "holds": holds,
         "most": (1 << output.width) - 1,
@@ -133,7 +153,11 @@ def _pulse(output: Output, kind: str, *, holds: bool = False) -> dict[str, objec
 
 
 def _level(output: Output) -> dict[str, object]:
-    return {"name": output.name, "value": f"{'~' if output.active_low else ''}out_{output.name}"}
+    return {
+        "name": output.name,
+        "value": f"{'~' if output.active_low else ''}out_{output.name}",
+        "vhdl": f"{'not ' if output.active_low else ''}out_{output.name}(0)",
+    }
 
 
 def _checks(contract: Contract, stimuli: Sequence[Stimulus], most: int, *, fatal: bool) -> dict[str, object]:
@@ -165,13 +189,18 @@ def _checks(contract: Contract, stimuli: Sequence[Stimulus], most: int, *, fatal
         if count is None
         else {
             "width": count.width,
+            "signed": count.signed,
+            "lowest_bits": f"{count.lowest & BITS_67:067b}",
+            "highest_bits": f"{count.highest & BITS_67:067b}",
             "lowest": _signed_literal(count.lowest),
             "highest": _signed_literal(count.highest),
             "overflow": count.overflow,
             "extend": f"{{{67 - count.width}{{bits[{count.width - 1}]}}}}" if count.signed else f"{67 - count.width}'d0",
         },
         "period": contract.clock.period_ps,
-        "profiles": [{"name": one.name, "alone": one.power_up and contract.reset is None} for one in stimuli],
+        "profiles": [
+            {"name": one.name, "number": n, "alone": one.power_up and contract.reset is None} for n, one in enumerate(stimuli, 1)
+        ],
         "seed": stimuli[0].seed,
         "fatal": fatal,
         # Names of files and the like: a type of its own came with SystemVerilog.

@@ -23,7 +23,7 @@ from tbkit.regression import builtin_profiles
 from tbkit.simulators import Simulator
 from tbkit.standalone import render_folder
 from tbkit.stimulus import SIGNALS
-from tbkit.verify import Plan
+from tbkit.verify import Plan, Results
 
 #: The simulator's own words on what X at power-up means are no business of the bench.
 NEEDS_ZEROS = "zero_at_power_up"
@@ -63,6 +63,15 @@ def compiled(folder: Path, simulator: Simulator, *, form: str = "2012") -> None:
     # Of the bench itself not even the pickiest of its warnings.
     picky = run(["iverilog", f"-g{form}", "-Wall", "-s", BENCH, "-c", listed, "-o", "picky"], folder, simulator)
     assert [line for line in picky.stderr.splitlines() if line.startswith(BENCH) and "warning" in line] == []
+
+
+def first_clocks(results: Results) -> dict[str, int | None]:
+    """The same of ``tbkit verify``."""
+    return {
+        one.name: min((finding.clock for finding in one.findings), default=None)
+        for one in results.profiles
+        if one.score is not None
+    }
 
 
 def outcome(printed: str) -> dict[str, int | None]:
@@ -112,6 +121,54 @@ def test_faulty_decoders_fail_at_the_same_clock(mutant: Mutant, simulator: Simul
     folder = written(contract, planned, tmp_path / "folder")
     compiled(folder, simulator)
     code, printed = played(contract, folder, simulator, list(expected))
+    assert outcome(printed) == expected, told(results)
+    assert code == 1
+    assert re.search(r"^FAIL \d+ of \d+ profiles, \d+ checks$", printed, re.MULTILINE)
+
+
+def analysed(contract: Contract, folder: Path, simulator: Simulator) -> None:
+    standard = f"--std={contract.design.standard}"
+    sources = (folder / "files.f").read_text("utf-8").split()
+    for words in (["-a", standard, *sources], ["-e", standard, BENCH]):
+        done = run(["ghdl", *words], folder, simulator)
+        assert (done.returncode, done.stdout, done.stderr) == (0, "", "")
+
+
+def run_ghdl(contract: Contract, folder: Path, simulator: Simulator, names: list[str]) -> tuple[int, str]:
+    words = ["ghdl", "-r", f"--std={contract.design.standard}", BENCH]
+    done = run(words, folder, simulator)
+    printed, code = done.stdout, done.returncode
+    if contract.reset is None:
+        for name in [name for name in names if name not in outcome(printed)]:
+            done = run([*words, f"-gPROFILE={name}"], folder, simulator)
+            printed, code = printed + done.stdout, code or done.returncode
+    return code, printed
+
+
+@pytest.mark.simulator("ghdl")
+@pytest.mark.parametrize("file", decoder_files("vhdl"), ids=lambda file: file.stem)
+def test_right_vhdl_decoders_pass(file: Path, simulator: Simulator, tmp_path: Path) -> None:
+    contract = read_contract(file)
+    planned = short_part(contract)
+    folder = written(contract, planned, tmp_path)
+    names = [stimulus.name for stimulus in planned.stimuli]
+    analysed(contract, folder, simulator)
+    code, printed = run_ghdl(contract, folder, simulator, names)
+    assert outcome(printed) == dict.fromkeys(names), printed
+    assert code == 0
+    assert re.search(r"^PASS \d+ profiles, \d+ checks$", printed, re.MULTILINE)
+
+
+@pytest.mark.simulator("ghdl")
+@pytest.mark.parametrize("mutant", [mutant for mutant in MUTANTS if mutant.vhdl], ids=lambda mutant: mutant.name)
+def test_faulty_vhdl_decoders_fail_at_the_same_clock(mutant: Mutant, simulator: Simulator, tmp_path: Path, out: Path) -> None:
+    contract = mutated(mutant, tmp_path / "rtl")
+    planned = short_part(contract)
+    results = play(contract, planned, simulator, out)
+    expected = first_clocks(results)
+    folder = written(contract, planned, tmp_path / "folder")
+    analysed(contract, folder, simulator)
+    code, printed = run_ghdl(contract, folder, simulator, list(expected))
     assert outcome(printed) == expected, told(results)
     assert code == 1
     assert re.search(r"^FAIL \d+ of \d+ profiles, \d+ checks$", printed, re.MULTILINE)
@@ -193,8 +250,8 @@ def test_vectors_are_the_stimulus(tmp_path: Path) -> None:
     folder = written(contract, planned, tmp_path)
     for stimulus in planned.stimuli:
         path = folder / "vectors" / f"{stimulus.name}.{stimulus.seed}.stimulus"
-        table = np.loadtxt(path, skiprows=1, converters={1: lambda text: int(text, 16)}, dtype=np.int64)
-        times, levels = np.cumsum(table[:, 0]), table[:, 1]
+        table = np.loadtxt(path, skiprows=1, converters={2: lambda text: int(text, 16)}, dtype=np.int64)
+        times, levels = np.cumsum(table[:, 0] * 10**6 + table[:, 1]), table[:, 2]
         assert times[-1] == stimulus.periods * stimulus.period_ps
         for bit, name in enumerate(SIGNALS):
             line = {**stimulus.lines, **stimulus.drives}[name]
