@@ -261,8 +261,11 @@ def _roles(rtl: Rtl, file: Path, given: Mapping[str, str]) -> Roles:
 def _output(name: str, text: str, ports: Mapping[str, RtlPort]) -> Output | None:
     """Ports or bits of them such as ``word[11:8],low[7:0]``, the most significant first; None for no text."""
     slices, width = [], 0
-    for part in text.split(",") if text else []:
+    parts = text.split(",") if text else []
+    for part in parts:
         port, _, bits = part.rstrip("]").partition("[")
+        if not bits and len(parts) > 1:
+            bits = f"{(ports[port].width or 1) - 1}:0"
         high, _, low = bits.partition(":")
         slices.append(Slice(port, int(high), int(low or high)) if bits else Slice(port))
         width += int(high) - int(low or high) + 1 if bits else ports[port].width or 1
@@ -307,11 +310,15 @@ class _Prober:
         )
         self.reset_on = 1
         self.step_kind, self.step_idle = "", 0
+        self.strobes = False
+        self.asynchronous: bool | None = None
+        self.reset_for: int | None = None
+        self.settle: int | None = None
         self.forward_literal = roles.literals[0] if roles.literals else ""
         self.latency: dict[str, Span] = {}
 
     def script(self, state: str = "00") -> Script:
-        return Script(self.reset_on, state).begin()
+        return Script(self.reset_on, state, strobes=self.strobes).begin()
 
     def play(self, *scripts: Script) -> list[Trace]:
         return probe(self.contract, self.simulator, self.folder, list(scripts))
@@ -320,10 +327,13 @@ class _Prober:
         """What shows a count: the count, or the steps."""
         if trace.count is not None:
             return trace.count
-        steps = [one for one in (trace.step, trace.up, trace.down) if one is not None]
-        if self.step_kind:
-            steps = [_total(one, self.step_kind, self.step_idle) for one in steps]
+        steps = self.steps(trace)
         return steps[0] if len(steps) == 1 else _together(*steps)
+
+    def steps(self, trace: Trace) -> list[Series]:
+        """How many steps each output has told; what it does itself as long as its kind is not known."""
+        steps = [one for one in (trace.step, trace.up, trace.down) if one is not None]
+        return [_total(one, self.step_kind, self.step_idle) for one in steps] if self.step_kind else steps
 
     def run(self) -> None:
         self._reset()
@@ -331,7 +341,12 @@ class _Prober:
         self._start()
         edges = self._sweep()
         self._latencies()
-        self._paces(edges)
+        if self.strobes:
+            self._slow_paces()
+        else:
+            self._paces(edges)
+        if self.roles.latch:
+            self._latch()
         self._illegal()
         if self.roles.index is not None:
             self._index()
@@ -341,10 +356,21 @@ class _Prober:
         """The level at which the reset port lets it count; if at none, that of a latch, or registers that begin at zero."""
         moved = self._moves()
         if max(moved.values()) < _FEWEST and self.roles.latch:
-            latch = replace(self.roles.latch, active_low=not self.roles.latch.active_low)
-            self.roles = replace(self.roles, latch=latch)
-            self.contract = replace(self.contract, inputs=(Input(latch, "latch"),))
+            self._invert_latch()
             moved = self._moves()
+        if max(moved.values()) < _FEWEST and self.roles.latch:
+            # Not while it is up, then: as it goes up.
+            self._invert_latch()
+            self.strobes = True
+            moved = self._moves()
+        for held in self.roles.constants:
+            # An enable that its name does not tell.
+            if max(moved.values()) < _FEWEST and held.width == 1:
+                kept, other = self.roles, replace(held, value=1 - held.value)
+                self._hold(tuple(other if one is held else one for one in kept.constants))
+                moved = self._moves()
+                if max(moved.values()) < _FEWEST:
+                    self._hold(kept.constants)
         if max(moved.values()) < _FEWEST and self.design.language == "verilog":
             self.contract = replace(self.contract, start=replace(self.contract.start, zeroed=True))
             moved = self._moves()
@@ -353,6 +379,40 @@ class _Prober:
             text = "it never counts in slow motion: is an enable input held at the wrong level, or are the lines others than these?"
             raise InputError([Problem(str(self.design.sources[0]), 1, text)])
         self.reset_on = max(moved, key=lambda level: moved[level])
+
+    def _hold(self, constants: tuple[Constant, ...]) -> None:
+        self.roles = replace(self.roles, constants=constants)
+        self.contract = replace(self.contract, constants=constants)
+
+    def _invert_latch(self) -> None:
+        assert self.roles.latch is not None
+        latch = replace(self.roles.latch, active_low=not self.roles.latch.active_low)
+        self.roles = replace(self.roles, latch=latch)
+        self.contract = replace(self.contract, inputs=(Input(latch, "latch"),))
+
+    def _latch(self) -> None:
+        """How long after it is asked the port shows a count that has moved on meanwhile."""
+        script = self.script()
+        script.strobes = False
+        script.firsts["latch"] = 0
+        delays = []
+        for way in (1, 1, 1, -1) * 4:
+            for _ in range(self.every):
+                script.step(way)
+            script.mark("asked")
+            script.toggles["latch"] += [script.now, script.now + GAP]
+            script.wait(2 * GAP)
+        (trace,) = self.play(script)
+        for clock in script.marks["asked"]:
+            moved = changes(self.main(trace), clock - 1, clock + GAP)
+            if moved:
+                delays.append(moved[0][0] - clock)
+        if not delays or min(delays) != max(delays):
+            self.draft.doubts.append("how long the latch takes could not be told")
+        self.latency["inputs"] = Span(min(delays), min(delays)) if delays else Span(1, 1)
+        if self.strobes:
+            # Asked in every second clock it shows a clock late now and then.
+            self.latency["count"] = Span(self.latency["count"].min, self.latency["count"].min)
 
     def _moves(self) -> dict[int, int]:
         """How often it counts in slow motion, for each level of the reset."""
@@ -438,6 +498,11 @@ class _Prober:
             self.draft.doubts.append("back and forth over one edge does not give the same count: it moves at another edge backward")
         return [edge[:4] for edge in counted]
 
+    def _slow_paces(self) -> None:
+        """Of a count that is seen only now and then: that it follows everything is assumed."""
+        self.passes, self.rejects, self.bursts, self.shortest, self.filters = 1, 0, False, 1, False
+        self.draft.doubts.append("its count is seen only as the latch is asked: that there is no filter is assumed")
+
     def _paces(self, edges: list[tuple[int, str, str, int]]) -> None:
         """The filter, the shortest state, the reset's length and what follows it."""
         _, before, after, _ = next(edge for edge in edges if edge[3] > 0)
@@ -447,7 +512,7 @@ class _Prober:
             self.draft.doubts.append(f"pulses of {LENGTHS[-1]} clocks do not always pass; that those of more do is assumed")
         self.passes, self.rejects, self.bursts = pulses.passes or LENGTHS[-1] + 1, pulses.rejects, pulses.bursts
         self.gap = max(2 * self.passes, pulses.latest) + 8
-        shortest = shortest_state(self, self.gap)
+        shortest = shortest_state(self, self.gap, self.passes)
         if shortest is None:
             self.draft.doubts.append("not every state is counted, however long it lasts")
         self.shortest = shortest or 1
@@ -458,7 +523,6 @@ class _Prober:
             self.bursts = True
             late = pulses.latest - self.latency["count"].max
             self.latency = {name: replace(span, max=span.max + late) for name, span in self.latency.items()}
-        self.asynchronous = self.reset_for = self.settle = None
         if self.roles.reset is not None and self.rest_states:
             if self.roles.count is not None:
                 self.asynchronous = reset_is_asynchronous(self, self.start_count)
@@ -664,12 +728,14 @@ class _Prober:
         add("lines", f"{{a: {a}, b: {b}{index}}}", "named")
         if roles.constants or roles.latch:
             low = ", active: low" if roles.latch and roles.latch.active_low else ""
-            held = [f"{roles.latch.name}: {{role: latch{low}}}"] if roles.latch else []
+            sense = ", sense: edge" if self.strobes else ""
+            held = [f"{roles.latch.name}: {{role: latch{low}{sense}}}"] if roles.latch else []
             held += [
                 f"{one.port}: {one.value}" if one.width == 1 else f"{one.port}: {{value: {one.value}, width: {one.width}}}"
                 for one in roles.constants
             ]
-            add("inputs", f"{{{', '.join(held)}}}", "assumed" + (": held at these levels" if roles.constants else ""))
+            how = "assumed: held at these levels" if roles.constants else "named; when it acts is measured"
+            add("inputs", f"{{{', '.join(held)}}}", how)
         self._write_outputs()
         if not self.illegal_holds:
             add("illegal", "{count: any}", "measured: the count moves")
@@ -693,6 +759,8 @@ class _Prober:
             told["direction"] = self.latency["direction"]
         if self.roles.count and self.roles.steps and self.latency["step"] != told[main]:
             told["step"] = self.latency["step"]
+        if "inputs" in self.latency and self.latency["inputs"] != Span(1, 1):
+            told["inputs"] = self.latency["inputs"]
         for name in ("error", "index"):
             if name in self.latency and self.latency[name] != told[main]:
                 told[name] = self.latency[name]

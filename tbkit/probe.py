@@ -33,6 +33,8 @@ class Script:
 
     reset_on: int = 1
     state: str = "00"
+    #: The latch is asked in every second clock, instead of all the time.
+    strobes: bool = False
     now: float = 0.0
     toggles: dict[str, list[float]] = field(default_factory=lambda: {name: [] for name in SIGNALS})
     firsts: dict[str, int] = field(default_factory=dict)
@@ -88,6 +90,8 @@ class Script:
             name: Line(self.firsts.get(name, 0), np.array([round(at * period_ps) for at in self.toggles[name]], dtype=np.int64))
             for name in SIGNALS
         }
+        if self.strobes:
+            lines["latch"] = Line(0, np.arange(int(self.now) + GAP, dtype=np.int64) * period_ps + period_ps // 3)
         zero = np.zeros(1, dtype=np.int64)
         ideal = Edges({}, Crossings(none, none, none.astype(bool)), 0.5, (), exact_index=True)
         return Stimulus(

@@ -32,9 +32,12 @@ RIGHT = [
     *(file for file in decoder_files("verilog") if file.stem != NEEDS_ZEROS),
 ]
 #: Each time the examples, and some of the others; all with ``TBKIT_SOAK=1``.
-CHOSEN = RIGHT if SOAK else [*RIGHT[:3], *RIGHT[3::5]]
+CHOSEN = RIGHT if SOAK else [*RIGHT[:3], *RIGHT[3::12]]
 FAULTY = [mutant for mutant in MUTANTS if not mutant.vhdl and mutant.stem != NEEDS_ZEROS]
-CHOSEN_FAULTY = FAULTY if SOAK else FAULTY[::9]
+CHOSEN_FAULTY = FAULTY if SOAK else FAULTY[::16]
+VHDL, FAULTY_VHDL = decoder_files("vhdl"), [mutant for mutant in MUTANTS if mutant.vhdl]
+#: A tick that is not asked for makes it remember the profile before, and which one that is differs.
+REMEMBERS = {"moves-between-ticks"}
 
 _LINE = re.compile(
     r"^(pass|fail)  (\S+): (?:\d+ of (\d+) checks, first at clock (\d+)|(\d+) checks|nothing was compared)$", re.MULTILINE
@@ -59,7 +62,9 @@ def run(command: list[str], folder: Path, simulator: Simulator, limit: float = 5
 def compiled(folder: Path, simulator: Simulator, *, form: str = "2012") -> None:
     listed = "files.f" if form == "2012" else "files_2005.f"
     done = run(["iverilog", f"-g{form}", "-s", BENCH, "-c", listed, "-o", "bench"], folder, simulator)
-    assert (done.returncode, done.stdout, done.stderr) == (0, "", "")
+    assert (done.returncode, done.stdout) == (0, "")
+    # What Icarus cannot do with a decoder's own text it says of every use of it.
+    assert [line for line in done.stderr.splitlines() if ": sorry: " not in line] == []
     # Of the bench itself not even the pickiest of its warnings.
     picky = run(["iverilog", f"-g{form}", "-Wall", "-s", BENCH, "-c", listed, "-o", "picky"], folder, simulator)
     assert [line for line in picky.stderr.splitlines() if line.startswith(BENCH) and "warning" in line] == []
@@ -121,7 +126,10 @@ def test_faulty_decoders_fail_at_the_same_clock(mutant: Mutant, simulator: Simul
     folder = written(contract, planned, tmp_path / "folder")
     compiled(folder, simulator)
     code, printed = played(contract, folder, simulator, list(expected))
-    assert outcome(printed) == expected, told(results)
+    found = outcome(printed)
+    if mutant.name in REMEMBERS:
+        found, expected = ({name: clock is None for name, clock in one.items()} for one in (found, expected))
+    assert found == expected, told(results)
     assert code == 1
     assert re.search(r"^FAIL \d+ of \d+ profiles, \d+ checks$", printed, re.MULTILINE)
 
@@ -146,7 +154,7 @@ def run_ghdl(contract: Contract, folder: Path, simulator: Simulator, names: list
 
 
 @pytest.mark.simulator("ghdl")
-@pytest.mark.parametrize("file", decoder_files("vhdl"), ids=lambda file: file.stem)
+@pytest.mark.parametrize("file", VHDL if SOAK else VHDL[::2], ids=lambda file: file.stem)
 def test_right_vhdl_decoders_pass(file: Path, simulator: Simulator, tmp_path: Path) -> None:
     contract = read_contract(file)
     planned = short_part(contract)
@@ -160,7 +168,7 @@ def test_right_vhdl_decoders_pass(file: Path, simulator: Simulator, tmp_path: Pa
 
 
 @pytest.mark.simulator("ghdl")
-@pytest.mark.parametrize("mutant", [mutant for mutant in MUTANTS if mutant.vhdl], ids=lambda mutant: mutant.name)
+@pytest.mark.parametrize("mutant", FAULTY_VHDL if SOAK else FAULTY_VHDL[::3], ids=lambda mutant: mutant.name)
 def test_faulty_vhdl_decoders_fail_at_the_same_clock(mutant: Mutant, simulator: Simulator, tmp_path: Path, out: Path) -> None:
     contract = mutated(mutant, tmp_path / "rtl")
     planned = short_part(contract)
@@ -199,7 +207,7 @@ def test_pyslang_has_nothing_to_say(file: Path, tmp_path: Path) -> None:
 
 
 @pytest.mark.simulator("verilator")
-@pytest.mark.parametrize("name", ["spindle", "faulty_reversal"])
+@pytest.mark.parametrize("name", ["spindle", "faulty_reversal"] if SOAK else ["faulty_reversal"])
 def test_verilator(name: str, simulator: Simulator, tmp_path: Path, out: Path) -> None:
     contract = read_contract(EXAMPLES / f"{name}.yaml")
     planned = short_part(contract)
@@ -223,6 +231,20 @@ def test_verilator(name: str, simulator: Simulator, tmp_path: Path, out: Path) -
     }
     assert outcome(ran.stdout) == expected, ran.stdout
     assert (ran.returncode != 0) == (results.verdict == "fail")
+
+
+@pytest.mark.simulator("verilator")
+@pytest.mark.parametrize("file", RIGHT if SOAK else RIGHT[::6], ids=lambda file: file.stem)
+def test_verilator_does_not_warn_of_the_bench(file: Path, simulator: Simulator, tmp_path: Path) -> None:
+    contract = read_contract(file)
+    folder = written(contract, Plan(short_part(contract).stimuli[:1], ()), tmp_path)
+    root = dict(simulator.environment).get("VERILATOR_ROOT")
+    program = ["perl", str(Path(root) / "bin" / "verilator")] if root else ["verilator"]
+    words = ["--lint-only", "--timing", "--assert", "--no-sched-zero-delay", "-Wno-fatal", "--top-module", BENCH, "-f", "files.f"]
+    lint = run([*program, *words], folder, simulator)
+    assert lint.returncode == 0
+    # Warnings begin with their place: none is in the bench.
+    assert not re.search(rf"^%\S+: {BENCH}", lint.stderr, re.MULTILINE), lint.stderr
 
 
 @pytest.mark.simulator("icarus")
