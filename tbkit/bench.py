@@ -26,7 +26,7 @@ from pathlib import Path
 from tbkit import __version__
 from tbkit.contract import BENCH, Contract, Design
 from tbkit.errors import SimulatorError
-from tbkit.render import render_bench
+from tbkit.render import Rendered, render_bench
 from tbkit.render_vhdl import render_vhdl
 from tbkit.simulators import Simulator
 from tbkit.stimulus import Stimulus
@@ -112,6 +112,16 @@ def _shown(log: str) -> str:
     return "\n".join(f"  {line}" for line in lines)
 
 
+def _traced(log: str, bench: Rendered) -> str:
+    """A log in which messages about lines of the bench tell the line of the template too."""
+
+    def led_back(match: re.Match[str]) -> str:
+        origin = bench.origin(int(match.group(1)))
+        return f"{match.group(0)} ({origin})" if origin else match.group(0)
+
+    return re.sub(rf"\b{BENCH}\.\w+:(\d+)(?=[:,])", led_back, log)
+
+
 def _misfits(log: str) -> list[str]:
     """What a compiler only warns of, and what would make a test of another decoder than was described."""
     about_bench = [line for line in log.splitlines() if f"{BENCH}.sv:" in line]
@@ -153,14 +163,14 @@ def build(contract: Contract, simulator: Simulator, out: Path) -> Build:
     design = contract.design
     bench = render_vhdl(contract, read_ports(design)) if design.language == "vhdl" else render_bench(contract)
     bench_file = f"{BENCH}.{'vhd' if design.language == 'vhdl' else 'sv'}"
-    folder = out / "build" / f"{simulator.name}-{digest(design, bench, simulator)}"
+    folder = out / "build" / f"{simulator.name}-{digest(design, bench.text, simulator)}"
     if folder.is_dir():
         return Build(simulator, folder)
     folder.parent.mkdir(parents=True, exist_ok=True)
     runtime = hashlib.blake2b(f"{simulator} {metadata.version('cocotb')} {sys.executable}".encode(), digest_size=6)
     # Built aside and put in place when whole, so that an interrupted build is never taken for a good one.
     work = Path(tempfile.mkdtemp(prefix="unfinished-", dir=folder.parent))
-    (work / bench_file).write_text(bench, "utf-8")
+    (work / bench_file).write_text(bench.text, "utf-8")
     request: dict[str, object] = {
         "task": "build",
         "simulator": simulator.name,
@@ -175,7 +185,7 @@ def build(contract: Contract, simulator: Simulator, out: Path) -> Build:
     if code != 0:
         shutil.rmtree(work)
         what = f"took longer than {BUILD_SECONDS} s to build" if code is None else "could not build"
-        msg = f"{simulator} {what} the decoder {design.top!r} of {contract.file}:\n{_shown(log)}"
+        msg = f"{simulator} {what} the decoder {design.top!r} of {contract.file}:\n{_shown(_traced(log, bench))}"
         raise SimulatorError(msg)
     if misfits := _misfits(log):
         shutil.rmtree(work)

@@ -87,6 +87,7 @@ def _parser() -> argparse.ArgumentParser:
     render.add_argument(
         "--only", action="append", default=[], metavar="NAME", help="take only this profile; may be given several times"
     )
+    render.add_argument("--templates", metavar="DIR", type=Path, help="a folder with templates of your own, which win over tbkit's")
     render.add_argument("--check", metavar="DIR", type=Path, help="write nothing; say whether this folder is up to date")
     found = commands.add_parser(
         "describe",
@@ -203,7 +204,7 @@ def _render(options: argparse.Namespace, console: Console) -> int:
     if options.decoder is None or options.output is None:
         text = "name the decoder file and the folder to write: tbkit render DECODER -o DIR; or a folder to check: --check DIR"
         raise InputError([Problem("render", 0, text)])
-    files, left_out = _rendered(options.decoder, options.profiles, options.only, options.seed, options.output)
+    files, left_out = _rendered(options.decoder, options.profiles, options.only, options.seed, options.output, options.templates)
     for name, text in files.items():
         path = options.output / name
         path.parent.mkdir(parents=True, exist_ok=True)
@@ -215,7 +216,7 @@ def _render(options: argparse.Namespace, console: Console) -> int:
 
 
 def _rendered(
-    decoder: Path, own: Sequence[Path], only: Sequence[str], seed: int, home: Path
+    decoder: Path, own: Sequence[Path], only: Sequence[str], seed: int, home: Path, overrides: Path | None
 ) -> tuple[dict[str, str], list[tuple[str, str]]]:
     """The files of a rendered folder, and the profiles that are left out with the reason.
 
@@ -224,6 +225,8 @@ def _rendered(
     """
     contract, profiles = read_contract(decoder), _profiles(own, only)
     problems = check_against_rtl(contract)
+    if overrides is not None and not overrides.is_dir():
+        problems.append(Problem(str(overrides), 0, "there is no such folder"))
     planned = plan(contract, profiles, seed)
     left_out = [(one.name, one.reason) for one in planned.left_out]
     if not planned.stimuli:
@@ -231,13 +234,14 @@ def _rendered(
     if problems:
         raise InputError(problems)
     try:
-        files = standalone.render_folder(contract, profiles, planned.stimuli, home)
+        files = standalone.render_folder(contract, profiles, planned.stimuli, home, overrides)
     except UnfitError as error:
         raise InputError([Problem(str(decoder), 1, str(error))]) from error
     request = {
         "decoder": standalone.relative(decoder, home),
         "profiles": [standalone.relative(path, home) for path in own],
         "only": list(only),
+        "templates": standalone.relative(overrides, home) if overrides else None,
         "seed": seed,
     }
     files[standalone.MANIFEST] = standalone.manifest(files, request)
@@ -254,10 +258,10 @@ def _check_folder(home: Path, console: Console) -> int:
     try:
         request = json.loads(place.read_text("utf-8"))["request"]
         own, only, seed = [home / path for path in request["profiles"]], request["only"], request["seed"]
-        decoder = home / request["decoder"]
+        decoder, overrides = home / request["decoder"], request["templates"] and home / request["templates"]
     except (OSError, ValueError, KeyError, TypeError) as error:
         raise InputError([Problem(str(place), 0, "this is no folder that tbkit has rendered")]) from error
-    files, _ = _rendered(decoder, own, only, seed, home)
+    files, _ = _rendered(decoder, own, only, seed, home, overrides)
     there = {path.relative_to(home).as_posix() for path in home.glob(f"{standalone.VECTORS}/*")} | set(files)
     problems = []
     again = f"; render it again: tbkit render {decoder} -o {home}"

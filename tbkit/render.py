@@ -7,29 +7,97 @@ read, and every value is turned into a sized literal here.
 from __future__ import annotations
 
 import hashlib
+import re
+import traceback
 from collections.abc import Mapping
+from dataclasses import dataclass
 from importlib import resources
+from pathlib import Path
 
 import jinja2
 
 from tbkit import __version__
 from tbkit.contract import BENCH, DEEDS, Contract, Output, Port, Slice
 from tbkit.encoder import LINES
+from tbkit.errors import InputError, Problem
 from tbkit.stimulus import SIGNALS, UNKNOWN
 from tbkit.trace import record_words
+from tbkit.yamltree import KEYWORDS
+
+#: Stands behind each line of a template while it is rendered, and tells where that line is from.
+_MARK = re.compile("\x00([^\x00]*)\x00")
+_WORD = re.compile(r"[A-Za-z_][A-Za-z0-9_$]*")
 
 
-def template(name: str) -> jinja2.Template:
-    """A template of this package; what it is not given is an error."""
+@dataclass(frozen=True, slots=True)
+class Rendered:
+    """A text, and for each of its lines the template and the line there that it comes from, such as ``bench.sv.j2:12``."""
+
+    text: str
+    origins: tuple[str, ...]
+
+    def origin(self, line: int) -> str:
+        """Where a line (the first is 1) comes from; empty if it is not known."""
+        return self.origins[line - 1] if 0 < line <= len(self.origins) else ""
+
+
+def sv_name(name: str) -> str:
+    """A name as an identifier of SystemVerilog; a keyword is escaped.
+
+    Raises:
+        ValueError: it is no name.
+    """
+    if not _WORD.fullmatch(name):
+        msg = f"{name!r} is no name in SystemVerilog"
+        raise ValueError(msg)
+    return f"\\{name} " if name in KEYWORDS else name
+
+
+def _marked(name: str, source: str) -> str:
+    """A template whose lines tell where they are from; a line that ends with a tag leaves no line of its own."""
+    lines = source.splitlines()
+    return "\n".join(
+        line if line.rstrip().endswith(("%}", "#}")) else f"{line}\x00{name}:{number}\x00" for number, line in enumerate(lines, 1)
+    ) + ("\n" if source.endswith("\n") else "")
+
+
+def rendered(name: str, context: Mapping[str, object], overrides: Path | None = None) -> Rendered:
+    """A template filled in; what it is not given is an error. Templates in the folder ``overrides`` win over those of tbkit.
+
+    Raises:
+        InputError: a template of the user's is wrong, with its line.
+    """
+
+    def load(wanted: str) -> tuple[str, str, None]:
+        own = overrides / wanted if overrides else None
+        place = own if own is not None and own.is_file() else resources.files("tbkit.templates").joinpath(wanted)
+        return _marked(wanted, place.read_text("utf-8")), str(place), None
+
     environment = jinja2.Environment(
-        loader=jinja2.FunctionLoader(lambda name: resources.files("tbkit.templates").joinpath(name).read_text("utf-8")),
+        loader=jinja2.FunctionLoader(load),
         undefined=jinja2.StrictUndefined,
         trim_blocks=True,
         lstrip_blocks=True,
         keep_trailing_newline=True,
         autoescape=False,  # noqa: S701  # HDL is rendered, not HTML
     )
-    return environment.get_template(name)
+    environment.filters["sv_name"] = sv_name
+    try:
+        text = environment.get_template(name).render(**context)
+    except jinja2.TemplateSyntaxError as error:
+        raise InputError([Problem(str(error.filename), error.lineno, f"the template cannot be read: {error.message}")]) from error
+    except (jinja2.UndefinedError, ValueError, TypeError) as error:
+        frames = [frame for frame in traceback.extract_tb(error.__traceback__) if frame.filename.endswith(".j2")]
+        if not frames:
+            raise
+        place = frames[-1]
+        raise InputError([Problem(place.filename, place.lineno or 0, f"the template cannot be filled in: {error}")]) from error
+    lines, origins = [], []
+    for line in text.split("\n"):
+        marks = _MARK.findall(line)
+        origins.append(marks[-1] if marks else "")
+        lines.append(_MARK.sub("", line))
+    return Rendered("\n".join(lines), tuple(origins))
 
 
 def digest_of(context: dict[str, object]) -> str:
@@ -155,10 +223,10 @@ def _context(contract: Contract) -> dict[str, object]:
     }
 
 
-def render_bench(contract: Contract, checks: Mapping[str, object] | None = None) -> str:
-    """The text of the bench; the same contract gives the same bytes.
+def render_bench(contract: Contract, checks: Mapping[str, object] | None = None, overrides: Path | None = None) -> Rendered:
+    """The bench; the same contract gives the same bytes.
 
     ``checks``: what a bench that checks by itself is told (:mod:`tbkit.standalone`); None: one that tbkit plays on.
     """
     context = {**_context(contract), "checks": checks}
-    return template("bench.sv.j2").render(digest=digest_of(context), **context)
+    return rendered("bench.sv.j2", {"digest": digest_of(context), **context}, overrides)

@@ -7,10 +7,11 @@ identifiers when the decoder file was read, types as GHDL knows them, and litera
 from __future__ import annotations
 
 from collections.abc import Mapping
+from pathlib import Path
 
 from tbkit.contract import Contract, Output, Slice
 from tbkit.errors import InputError, Problem
-from tbkit.render import basics, digest_of, driven, template
+from tbkit.render import Rendered, basics, digest_of, driven, rendered
 from tbkit.trace import record_words
 from tbkit.units import PS_PER_S
 from tbkit.vhdlports import BITS, INTEGERS, VECTORS, VhdlPort, VhdlType
@@ -135,8 +136,10 @@ def _own_marks(kind: VhdlType) -> list[str]:
     return [kind.mark, *inner] if "." in kind.mark else inner
 
 
-def render_vhdl(contract: Contract, known: dict[str, VhdlPort], checks: Mapping[str, object] | None = None) -> str:
-    """The text of the bench; the same contract and ports give the same bytes.
+def render_vhdl(
+    contract: Contract, known: dict[str, VhdlPort], checks: Mapping[str, object] | None = None, overrides: Path | None = None
+) -> Rendered:
+    """The bench; the same contract and ports give the same bytes.
 
     ``checks``: what a bench that checks by itself is told (:mod:`tbkit.standalone`); None: one that tbkit plays on.
 
@@ -182,4 +185,4 @@ def render_vhdl(contract: Contract, known: dict[str, VhdlPort], checks: Mapping[
             "every": clock.every,
         },
     }
-    return template("bench.vhd.j2").render(digest=digest_of(context), **context)
+    return rendered("bench.vhd.j2", {"digest": digest_of(context), **context}, overrides)

@@ -8,7 +8,7 @@ from __future__ import annotations
 import hashlib
 import json
 import os
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from pathlib import Path
 
 import numpy as np
@@ -18,7 +18,7 @@ from tbkit.contract import BENCH, Contract, Output
 from tbkit.errors import UnfitError
 from tbkit.lineoracle import expect
 from tbkit.profile import Profile
-from tbkit.render import render_bench, template
+from tbkit.render import Rendered, render_bench, rendered
 from tbkit.render_vhdl import render_vhdl
 from tbkit.rows import OPS, STREAMS, Row, direction_offset, rows
 from tbkit.shaftoracle import rests
@@ -31,6 +31,8 @@ MEMORY = 60
 BITS_67 = (1 << 67) - 1
 PS_PER_US = 10**6
 VECTORS = "vectors"
+#: Before the names of the files that lead lines of a bench back to its templates.
+ORIGINS = "template-lines-of-"
 MANIFEST = "manifest.json"
 
 
@@ -39,12 +41,15 @@ def digest(path: Path) -> str:
     return hashlib.blake2b(path.read_bytes(), digest_size=8).hexdigest()
 
 
-def render_folder(contract: Contract, profiles: Sequence[Profile], stimuli: Sequence[Stimulus], home: Path) -> dict[str, str]:
+def render_folder(
+    contract: Contract, profiles: Sequence[Profile], stimuli: Sequence[Stimulus], home: Path, overrides: Path | None = None
+) -> dict[str, str]:
     """Every file of the folder ``home``, by its name; the same input gives the same texts.
 
-    ``stimuli`` are those of the ``profiles`` that fit.
+    ``stimuli`` are those of the ``profiles`` that fit; ``overrides`` is a folder with templates of the user's own.
 
     Raises:
+        InputError: a template of the user's is wrong.
         UnfitError: latencies are too long for the bench's memory.
     """
     _check_memory(contract)
@@ -55,29 +60,27 @@ def render_folder(contract: Contract, profiles: Sequence[Profile], stimuli: Sequ
         expected = _rows(contract, stimulus)
         most = max(most, len(expected))
         profile = made[stimulus.name]
-        head = (
-            f"tbkit {__version__}, decoder file {contract.file.name} {digest(contract.file)},"
-            f" profile {stimulus.name} {digest(profile.file)}, seed {stimulus.seed}"
-        )
+        head = f"{_head(contract)}, profile {stimulus.name} {digest(profile.file)}, seed {stimulus.seed}"
         name = f"{VECTORS}/{stimulus.name}.{stimulus.seed}"
         files[f"{name}.stimulus"] = _stimulus(head, stimulus)
         files[f"{name}.expected"] = "\n".join([f"{head}: stream op from to value step flags", *(row.text for row in expected), ""])
-    files |= _benches(contract, lambda fatal: _checks(contract, stimuli, most, fatal=fatal), home)
-    files["README.txt"] = template("readme.txt.j2").render(
-        version=__version__,
-        file=contract.file.name,
-        digest=digest(contract.file),
-        bench=BENCH,
-        top=contract.design.top,
-        vhdl=contract.design.language == "vhdl",
-        standard=contract.design.standard,
-        zeroed=contract.start.zeroed,
-        seeds=sorted({stimulus.seed for stimulus in stimuli}),
-    )
+    files |= _benches(contract, lambda fatal: _checks(contract, stimuli, most, fatal=fatal), home, overrides)
+    told = {
+        "version": __version__,
+        "file": contract.file.name,
+        "digest": digest(contract.file),
+        "bench": BENCH,
+        "top": contract.design.top,
+        "vhdl": contract.design.language == "vhdl",
+        "standard": contract.design.standard,
+        "zeroed": contract.start.zeroed,
+        "seeds": sorted({stimulus.seed for stimulus in stimuli}),
+    }
+    files["README.txt"] = rendered("readme.txt.j2", told, overrides).text
     return files
 
 
-def _benches(contract: Contract, checks: Callable[[bool], dict[str, object]], home: Path) -> dict[str, str]:
+def _benches(contract: Contract, checks: Callable[[bool], dict[str, object]], home: Path, overrides: Path | None) -> dict[str, str]:
     """The bench in each form, with its list of files; ``checks`` is told whether the form knows ``$fatal``.
 
     Raises:
@@ -86,18 +89,32 @@ def _benches(contract: Contract, checks: Callable[[bool], dict[str, object]], ho
     """
     sources = [relative(path, home) for path in contract.design.sources]
     if contract.design.language == "vhdl":
-        bench = render_vhdl(contract, read_ports(contract.design), checks(True))
-        return {f"{BENCH}.vhd": bench, "files.f": "\n".join([*sources, f"{BENCH}.vhd", ""])}
+        bench = render_vhdl(contract, read_ports(contract.design), checks(True), overrides)
+        listed = "\n".join([*sources, f"{BENCH}.vhd", ""])
+        return {f"{BENCH}.vhd": bench.text, f"{ORIGINS}{BENCH}.vhd.txt": _origins(contract, bench), "files.f": listed}
     folders = [f"+incdir+{relative(path, home)}" for path in contract.design.include_dirs]
     found: dict[str, str] = {}
     for suffix, listed, fatal in ((".sv", "files.f", True), (".v", "files_2005.f", False)):
-        found[f"{BENCH}{suffix}"] = render_bench(contract, checks(fatal))
+        bench = render_bench(contract, checks(fatal), overrides)
+        found[f"{BENCH}{suffix}"] = bench.text
+        found[f"{ORIGINS}{BENCH}{suffix}.txt"] = _origins(contract, bench)
         # The bench first: it tells the time scale, which a decoder without one takes on.
-        found[listed] = "\n".join([*folders, f"{BENCH}{suffix}", *sources, ""])
+        found[listed] = "\n".join([f"// {_head(contract)}", *folders, f"{BENCH}{suffix}", *sources, ""])
     return found
 
 
-def manifest(files: dict[str, str], request: dict[str, object]) -> str:
+def _origins(contract: Contract, bench: Rendered) -> str:
+    """Which line of which template each line comes from."""
+    lines = [f"{number} {origin}" for number, origin in enumerate(bench.origins, 1) if origin]
+    return "\n".join([f"{_head(contract)}: line of the bench, line of the template", *lines, ""])
+
+
+def _head(contract: Contract) -> str:
+    """What every file begins with."""
+    return f"tbkit {__version__}, decoder file {contract.file.name} {digest(contract.file)}"
+
+
+def manifest(files: Mapping[str, str], request: Mapping[str, object]) -> str:
     """What was rendered from what: ``request`` is enough to render it again."""
     digests = {name: hashlib.blake2b(text.encode(), digest_size=8).hexdigest() for name, text in sorted(files.items())}
     return json.dumps({"tbkit": __version__, "request": request, "files": digests}, indent=1) + "\n"

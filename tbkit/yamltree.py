@@ -27,7 +27,7 @@ LONGEST_TEXT = 1000
 
 # Verilog-2005 and SystemVerilog keywords that could pass for a port or module name.
 _HDL_IDENTIFIER = re.compile(r"[A-Za-z_][A-Za-z0-9_$]{0,254}")
-_HDL_KEYWORDS = frozenset(
+KEYWORDS = frozenset(
     """accept_on alias always always_comb always_ff always_latch and assert assign assume automatic before begin bind bins
     binsof bit break buf bufif0 bufif1 byte case casex casez cell chandle checker class clocking cmos config const
     constraint context continue cover covergroup coverpoint cross deassign default defparam design disable dist do edge
@@ -50,7 +50,7 @@ _HDL_KEYWORDS = frozenset(
 
 def identifier_fault(text: str) -> str:
     """Why ``text`` cannot be a plain identifier in every flavour of Verilog; ``""`` if it can."""
-    if text in _HDL_KEYWORDS:
+    if text in KEYWORDS:
         return f"found {text!r}, which is a SystemVerilog keyword; expected an HDL name"
     if not _HDL_IDENTIFIER.fullmatch(text):
         return f"found {quoted(text)}, expected an HDL name: a letter or _, then letters, digits, _ or $"
