@@ -15,6 +15,7 @@ from harness import SOAK, decoder_files, mutated, play, short_part, told
 from mutants import EXAMPLES, MUTANTS, Mutant
 from pyslang.ast import Compilation
 from pyslang.syntax import SyntaxTree
+from vcd.reader import TokenKind, tokenize
 
 from tbkit.cli import main
 from tbkit.contract import BENCH, Contract
@@ -263,6 +264,40 @@ def test_nothing_compared_fails(simulator: Simulator, tmp_path: Path) -> None:
     done = run(["vvp", "-n", "bench", "+tbkit_folder=vectors", "+profile=none"], folder, simulator)
     assert done.returncode == 1
     assert "FAIL no profile was run\n" in done.stdout
+
+
+@pytest.mark.simulator("icarus")
+def test_waves_on_request(simulator: Simulator, tmp_path: Path) -> None:
+    """Read back by pyvcd's reader, A and B change when the stimulus says, and the count comes to its last value."""
+    contract = read_contract(EXAMPLES / "spindle.yaml")
+    planned = Plan(tuple(one for one in short_part(contract).stimuli if one.name in ("reversals", "transitions")), ())
+    folder = written(contract, planned, tmp_path)
+    compiled(folder, simulator)
+    done = run(["vvp", "-n", "bench", "+tbkit_folder=vectors", "+profile=reversals", "+vcd=waves.vcd"], folder, simulator)
+    assert done.returncode == 0
+    assert outcome(done.stdout) == {"reversals": None}
+    names: dict[str, str] = {}
+    changes: dict[str, list[tuple[int, object]]] = {}
+    time, depth = 0, 0
+    with (folder / "waves.vcd").open("rb") as file:
+        for token in tokenize(file):
+            if token.kind is TokenKind.SCOPE:
+                depth += 1
+            elif token.kind is TokenKind.UPSCOPE:
+                depth -= 1
+            elif token.kind is TokenKind.VAR and depth == 1:
+                names[token.var.reference] = token.var.id_code
+            elif token.kind is TokenKind.CHANGE_TIME:
+                time = token.time_change
+            elif token.kind in (TokenKind.CHANGE_SCALAR, TokenKind.CHANGE_VECTOR):
+                change = token.scalar_change if token.kind is TokenKind.CHANGE_SCALAR else token.vector_change
+                changes.setdefault(change.id_code, []).append((time, change.value))
+    (stimulus,) = [one for one in planned.stimuli if one.name == "reversals"]
+    begin = next(time for time, value in changes[names["running"]] if value == "1")
+    for line in ("a", "b"):
+        seen = [time - begin for time, _ in changes[names[f"line_{line}"]] if time > begin]
+        assert seen == stimulus.lines[line].toggles_ps.tolist()
+    assert len(changes[names["out_count"]]) > 100
 
 
 def test_vectors_are_the_stimulus(tmp_path: Path) -> None:
