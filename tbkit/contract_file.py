@@ -34,7 +34,7 @@ from tbkit.contract import (
     Step,
 )
 from tbkit.contract_check import check_together
-from tbkit.yamltree import Entry, Section, identifier_fault, load, one_of, quoted, whole_number
+from tbkit.yamltree import Entry, Section, load, one_of, quoted, whole_number
 
 T = TypeVar("T")
 
@@ -71,7 +71,7 @@ def _bit(entry: Entry) -> Port:
         if match is None:
             msg = f'found {quoted(text)}, expected a port such as enc_a, or one bit of a vector such as "ab[0]"'
             raise ValueError(msg)
-        if fault := identifier_fault(match.group(1)):
+        if fault := entry.name_fault(match.group(1)):
             raise ValueError(fault)
         return Port(match.group(1), None if match.group(2) is None else int(match.group(2)))
 
@@ -88,7 +88,7 @@ def _slice(entry: Entry) -> Slice:
             raise ValueError(msg)
         name, high, low = match.groups()
         for part in name.split("."):
-            if fault := identifier_fault(part):
+            if fault := entry.name_fault(part):
                 raise ValueError(fault)
         if high is None:
             return Slice(name)
@@ -185,6 +185,8 @@ class _Reader:
         # A file that two of them name is compiled once.
         files = tuple(dict.fromkeys(path for item in sources.items() for path in self._sources(item))) if sources else ()
         vhdl = [path for path in files if path.suffix in VHDL_SUFFIXES]
+        if vhdl:
+            entry.names_are_vhdl()
         if sources and vhdl and len(vhdl) < len(files):
             other = next(path for path in files if path not in vhdl)
             sources.problem(f"{vhdl[0].name!r} is VHDL and {other.name!r} is Verilog; a decoder is in one language")
@@ -247,7 +249,7 @@ class _Reader:
 
     @staticmethod
     def _parameter(name: str, entry: Entry) -> tuple[str, int | str]:
-        if fault := identifier_fault(name):
+        if fault := entry.name_fault(name):
             entry.problem(fault)
 
         def read(text: str) -> int | str:
@@ -345,7 +347,7 @@ class _Reader:
             role = role_entry.choice(_ROLES) if role_entry else "constant"
             port_entry = section.get("port") if section else None
             port = port_entry.identifier() if port_entry else name
-            if port_entry is None and (fault := identifier_fault(name)):
+            if port_entry is None and (fault := value.name_fault(name)):
                 value.problem(f"{fault}; or any word, with {{port: NAME}}")
             if section is None:
                 constants.append(Constant(port, value.integer(0, 1, "; a wider input is written {value: 5, width: 3}")))
@@ -602,11 +604,13 @@ def read_contract(path: Path) -> Contract:
     if version:
         version.choice((str(FORMAT),), instead=", the format that this version of tbkit reads")
     reader = _Reader(top, path.parent)
+    # First, since its language says what can be a name.
+    design = reader.design()
+    reader.vhdl = design.language == "vhdl"
     constants, inputs = reader.inputs()
     a, b, index_line = reader.lines()
     shortest, timers = top.get("shortest_state"), top.get("timers")
-    count, design = reader.count(), reader.design()
-    reader.vhdl = design.language == "vhdl"
+    count = reader.count()
     contract = Contract(
         path,
         design,

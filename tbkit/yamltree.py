@@ -48,9 +48,9 @@ KEYWORDS = frozenset(
 )
 
 
-def identifier_fault(text: str) -> str:
-    """Why ``text`` cannot be a plain identifier in every flavour of Verilog; ``""`` if it can."""
-    if text in KEYWORDS:
+def _name_fault(text: str, *, vhdl: bool) -> str:
+    """Why ``text`` cannot be a plain name in the HDL; ``""`` if it can. What is a keyword in VHDL, GHDL will say."""
+    if text in KEYWORDS and not vhdl:
         return f"found {text!r}, which is a SystemVerilog keyword; expected an HDL name"
     if not _HDL_IDENTIFIER.fullmatch(text):
         return f"found {quoted(text)}, expected an HDL name: a letter or _, then letters, digits, _ or $"
@@ -74,6 +74,7 @@ class _Log:
     file: str
     problems: list[Problem] = field(default_factory=list)
     unsound: list[str] = field(default_factory=list)
+    vhdl: bool = False
 
 
 class Entry:
@@ -167,9 +168,17 @@ class Entry:
     def level(self) -> int:
         return int(self.choice(("0", "1")))
 
+    def name_fault(self, text: str) -> str:
+        """Why ``text`` cannot be the name of a module or port; empty if it can."""
+        return _name_fault(text, vhdl=self._log.vhdl)
+
+    def names_are_vhdl(self) -> None:
+        """From here on names in this file are those of VHDL."""
+        self._log.vhdl = True
+
     def identifier(self) -> str:
         def read(text: str) -> str:
-            if fault := identifier_fault(text):
+            if fault := self.name_fault(text):
                 raise ValueError(fault)
             return text
 

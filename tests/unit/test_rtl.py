@@ -194,3 +194,14 @@ def test_a_vhdl_input_with_a_default_may_be_left_open(folder: Path) -> None:
     ):
         (folder / "axis.vhd").write_text(VHDL.replace("{default}", default))
         assert [str(problem) for problem in check_against_rtl(read_contract(Path("x.yaml")))] == expected
+
+
+def test_vhdl_has_other_keywords(folder: Path) -> None:
+    """A port of VHDL may be called as a keyword of Verilog is."""
+    (folder / "axis.vhd").write_text(VHDL.replace("{default}", " := '1'").replace("pos :", "reg :").replace("a, b", "wire, bit"))
+    lines = (
+        "tbkit: 1", "decoder: {top: axis, sources: [axis.vhd]}", "clock: {port: clk, rate: 50 MHz}", "reset: none",
+        "lines: {a: wire, b: bit}", "count: {port: reg, width: 8, signed: true}", "latency: {count: 3}",
+    )  # fmt: skip
+    (folder / "x.yaml").write_text("\n".join(lines))
+    assert check_against_rtl(read_contract(Path("x.yaml"))) == []
