@@ -216,9 +216,9 @@ def _checks(contract: Contract, stimuli: Sequence[Stimulus], most: int, *, fatal
         },
         "period": contract.clock.period_ps,
         "profiles": [
-            {"name": one.name, "number": n, "alone": one.power_up and contract.reset is None} for n, one in enumerate(stimuli, 1)
+            {"name": one.name, "number": n, "seed": one.seed, "alone": one.power_up and contract.reset is None}
+            for n, one in enumerate(stimuli, 1)
         ],
-        "seed": stimuli[0].seed,
         "fatal": fatal,
         # Names of files and the like: a type of its own came with SystemVerilog.
         "text": "string" if fatal else "reg [8*1024-1:0]",

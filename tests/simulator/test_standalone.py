@@ -266,6 +266,31 @@ def test_nothing_compared_fails(simulator: Simulator, tmp_path: Path) -> None:
     assert "FAIL no profile was run\n" in done.stdout
 
 
+PROFILE = """\
+profile: mine
+seed: 77
+motion:
+  - walk: {travel: 100 states, speed: [0.1 states/dwell, 0.5 states/dwell]}
+"""
+
+
+@pytest.mark.simulator("icarus")
+def test_profiles_with_a_seed_of_their_own(
+    simulator: Simulator, tmp_path: Path, monkeypatch: pytest.MonkeyPatch, capsys: pytest.CaptureFixture[str]
+) -> None:
+    monkeypatch.chdir(tmp_path)
+    Path("mine.yaml").write_text(PROFILE, "utf-8")
+    words = ["render", str(EXAMPLES / "spindle.yaml"), "mine.yaml", "--only", "mine", "--only", "walk", "--seed", "5", "-o", "out"]
+    assert main(words) == 0, capsys.readouterr().err
+    assert sorted(path.name for path in Path("out/vectors").glob("*.stimulus")) == ["mine.77.stimulus", "walk.5.stimulus"]
+    compiled(tmp_path / "out", simulator)
+    done = run(["vvp", "-n", "bench", "+tbkit_folder=vectors"], tmp_path / "out", simulator)
+    assert outcome(done.stdout) == {"walk": None, "mine": None}
+    done = run(["vvp", "-n", "bench", "+tbkit_folder=vectors", "+profile=mine", "+seed=6"], tmp_path / "out", simulator)
+    assert "FAIL cannot open vectors/mine.6.expected\n" in done.stdout
+    assert done.returncode == 1
+
+
 @pytest.mark.simulator("icarus")
 def test_waves_on_request(simulator: Simulator, tmp_path: Path) -> None:
     """Read back by pyvcd's reader, A and B change when the stimulus says, and the count comes to its last value."""
