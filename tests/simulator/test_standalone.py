@@ -25,7 +25,7 @@ from tbkit.regression import builtin_profiles
 from tbkit.simulators import Simulator
 from tbkit.standalone import render_folder
 from tbkit.stimulus import SIGNALS
-from tbkit.verify import Plan, Results
+from tbkit.verify import Plan, Results, plan
 
 #: The simulator's own words on what X at power-up means are no business of the bench.
 NEEDS_ZEROS = "zero_at_power_up"
@@ -44,6 +44,11 @@ REMEMBERS = {"moves-between-ticks"}
 _LINE = re.compile(
     r"^(pass|fail)  (\S+): (?:\d+ of (\d+) checks, first at clock (\d+)|(\d+) checks|nothing was compared)$", re.MULTILINE
 )
+
+
+def brief(contract: Contract) -> Plan:
+    """One short profile."""
+    return plan(contract, [profile for profile in builtin_profiles() if profile.name == "transitions"], 1)
 
 
 def written(contract: Contract, planned: Plan, folder: Path) -> Path:
@@ -202,7 +207,7 @@ def diagnostics(files: list[Path], folders: tuple[Path, ...]) -> str:
 @pytest.mark.parametrize("file", RIGHT, ids=lambda file: file.stem)
 def test_pyslang_has_nothing_to_say(file: Path, tmp_path: Path) -> None:
     contract = read_contract(file)
-    planned = Plan(short_part(contract).stimuli[:1], ())
+    planned = brief(contract)
     folder = written(contract, planned, tmp_path)
     folders = contract.design.include_dirs
     own = diagnostics(list(contract.design.sources), folders)
@@ -240,7 +245,7 @@ def test_verilator(name: str, simulator: Simulator, tmp_path: Path, out: Path) -
 @pytest.mark.parametrize("file", RIGHT if SOAK else RIGHT[::6], ids=lambda file: file.stem)
 def test_verilator_does_not_warn_of_the_bench(file: Path, simulator: Simulator, tmp_path: Path) -> None:
     contract = read_contract(file)
-    folder = written(contract, Plan(short_part(contract).stimuli[:1], ()), tmp_path)
+    folder = written(contract, brief(contract), tmp_path)
     root = dict(simulator.environment).get("VERILATOR_ROOT")
     program = ["perl", str(Path(root) / "bin" / "verilator")] if root else ["verilator"]
     words = ["--lint-only", "--timing", "--assert", "--no-sched-zero-delay", "-Wno-fatal", "--top-module", BENCH, "-f", "files.f"]
@@ -254,7 +259,7 @@ def test_verilator_does_not_warn_of_the_bench(file: Path, simulator: Simulator, 
 def test_nothing_compared_fails(simulator: Simulator, tmp_path: Path) -> None:
     """Expectations without a row, and a profile that there is not."""
     contract = read_contract(EXAMPLES / "spindle.yaml")
-    planned = Plan(short_part(contract).stimuli[:1], ())
+    planned = brief(contract)
     folder = written(contract, planned, tmp_path)
     compiled(folder, simulator)
     name = planned.stimuli[0].name
