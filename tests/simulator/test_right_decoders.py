@@ -42,7 +42,7 @@ def test_more_seeds(file: Path, simulator: Simulator, out: Path) -> None:
     assert results.verdict == "pass", told(results)
 
 
-@pytest.mark.parametrize("file", FILES if SOAK else FILES[::2], ids=lambda file: file.stem)
+@pytest.mark.parametrize("file", FILES if SOAK else FILES[::3], ids=lambda file: file.stem)
 @pytest.mark.simulator("verilator")
 def test_verilator_agrees(file: Path, simulator: Simulator, out: Path) -> None:
     """Passes with the whole regression and some more seeds, and compares just as much as Icarus does."""
