@@ -57,7 +57,12 @@ def sticky_levels(
         together = (sets[:, 3] >= first) & (sets[:, 2] <= sure)
         if wins != "either" and by.exact and clear.exact and (sets[together, 4] == 1).all():
             # What is set while the clear lasts is cleared again, or never set; only with its end the two are at once.
+            within = sets[together & (sets[:, 2] < sure)]
             sets = sets[~together | ((sets[:, 2] == sure) & (wins == "set"))]
+            if wins == "set":
+                # For a clock it is seen.
+                cleared += [(k, k, at, at, -1, -1) for k, at in within[:, [0, 2]].tolist()]
+                cleared += [(k, k, at + 1, at + 1, 0, -1) for k, at in within[:, [0, 2]].tolist()]
             cleared.append((begin, end - 1, first, sure, 0, -1))
         else:
             # Which of them wins is not part of this contract.
