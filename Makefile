@@ -40,7 +40,8 @@ unit: $(READY)
 
 soak: $(READY)
 	TBKIT_SOAK=1 $(BIN)/python -m pytest -n auto tests/unit/test_oracles_bruteforce.py tests/unit/test_inputs.py \
-	  tests/simulator/test_right_decoders.py tests/simulator/test_mutants.py tests/simulator/test_describe.py $(PYTEST_ARGS)
+	  tests/simulator/test_right_decoders.py tests/simulator/test_mutants.py tests/simulator/test_describe.py \
+	  tests/simulator/test_standalone.py $(PYTEST_ARGS)
 
 table: $(READY)
 	$(BIN)/python tests/simulator/table.py
