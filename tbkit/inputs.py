@@ -51,15 +51,18 @@ def within(periods: Int64s, spans: tuple[tuple[int, int], ...]) -> Bools:
     return inside
 
 
-def _armed_once(presses: Spans, zones: Spans, resets: Spans, doubts: Sequence[Open], periods: int) -> tuple[Spans, list[Open]]:
+def _armed_once(
+    presses: Spans, zones: Spans, resets: Spans, doubts: Sequence[Open], periods: int, *, fresh: bool
+) -> tuple[Spans, list[Open]]:
     """When the index does nothing, and where that is open, if each press of an input lets it act once.
 
     Not said is what comes of a press in a reset or while the index is active already, and whether an index that acts while the
-    press still lasts has used it up. ``doubts``: where it is not sure whether the index is active.
+    press still lasts has used it up. ``doubts``: where it is not sure whether the index is active. Not ``fresh``: it may be armed
+    from what was played before.
     """
     disarmed: Spans = []
     opens: list[Open] = []
-    state, since, held = "off", 0, 0
+    state, since, held = "off" if fresh else "maybe", 0, 0
     moments = [(begin, 0, end) for begin, end in resets] + [(begin, 1, end) for begin, end in presses]
     moments += [(begin, 2, end) for begin, end in zones] + [(doubt.begin, 3, doubt.end) for doubt in doubts if not doubt.known]
     for begin, what, end in sorted(moments):
@@ -103,7 +106,10 @@ def acts(contract: Contract, asserted: Callable[[str], Spans], zones: Spans, dou
             presses = [(begin + shift, end + shift) for begin, end in asserted(deed)]
             settle = contract.start.settle
             resets = [(begin, end + settle) for begin, end in asserted("reset")] if contract.reset else []
-            disarmed, opens = _armed_once(presses, zones, resets, doubts, periods)
+            fresh = contract.reset is not None
+            idle, unsure_of = _armed_once(presses, zones, resets, doubts, periods, fresh=fresh)
+            disarmed += idle
+            opens += unsure_of
             continue
         met = index if role == "arm" else main
         for begin, end in asserted(deed):

@@ -105,8 +105,7 @@ def _count(contract: Contract, expectation: Expectation) -> list[Row]:
     count, events, epochs = contract.count, expectation.events, expectation.epochs
     assert count is not None
     by_step = ~events.sets | (~events.by_input & (not apart(contract)))
-    on_the_way = events.enters_index & events.sets & ~events.by_input & (events.step != 0) & apart(contract)
-    told = _signs(contract, events, by_step | on_the_way)
+    signs = _signs(contract, events, np.full(len(events), fill_value=True))
     start = into_range(count, contract.start.count)
     to = np.array([into_range(count, value) for value in events.to.tolist()], dtype=np.int64) if events.sets.any() else events.to
     found: list[Row] = []
@@ -116,7 +115,8 @@ def _count(contract: Contract, expectation: Expectation) -> list[Row]:
         found += [Row("count", "allow", epoch.begin, epoch.begin, value) for value in epoch.allowed or () if not base]
         plan = planned(contract, expectation, epoch)
         more = np.append(plan.latest[1:] == plan.latest[:-1], False) if expectation.answered is not None else plan.sets & False
-        flags = SETS * plan.sets + ON_THE_WAY * plan.on_the_way + MORE * more[: len(plan.sets)] + told[plan.event]
+        flags = SETS * plan.sets + ON_THE_WAY * plan.on_the_way + MORE * more[: len(plan.sets)]
+        flags = flags + np.where(by_step[plan.event] | plan.on_the_way, signs[plan.event], 0)
         columns = (plan.earliest, plan.latest, to[plan.event], plan.step, flags)
         found += [Row("count", "due", *row) for row in zip(*(column.tolist() for column in columns), strict=True)]
         if n + 1 < len(epochs) and epochs[n + 1].base == "carry":

@@ -185,13 +185,13 @@ def _origins(
         gated = np.where((gated == 1) & (np.concatenate([[0], gated[:-1]]) == 1), 0, gated)
     armed = _spans(stimulus, "arm")
     for at in np.flatnonzero(gated).tolist():
-        if contract.input("arm-once") and not any(begin <= since_ps[at] for begin, _ in armed):
+        if contract.input("arm-once") and contract.reset and not any(begin <= since_ps[at] for begin, _ in armed):
             continue
         # Soon after a reset the decoder need not be awake; while an input acts, what the index does is the line oracle's affair.
         asleep = any(begin <= since_ps[at] < time + quiet_ps for begin, time in releases)
         asleep |= any(begin - quiet_ps <= since_ps[at] < time + quiet_ps for begin, time in busy)
         assert contract.index is not None
-        value = contract.index.value if gated[at] == 1 and not asleep and not armed else None
+        value = contract.index.value if gated[at] == 1 and not asleep and not contract.input("arm-once") else None
         # The step into the index counts on from the value, or is lost to it; a jump is no step.
         stepped = at > 0 and abs(int(place[at] - place[at - 1])) == 1
         ideal = counted[at - 1] if contract.index.counts_last and stepped else counted[at]

@@ -53,7 +53,11 @@ def run(contract: Contract, stimulus: Stimulus, fault: str = "", seed: int = 0) 
     last, now, direction, captured = 0, rng.randint(count.lowest, count.highest), 0, 0
     logs = {name: _Log() for name in ("count", "direction", "index", "step")}
     pressed = dict.fromkeys(("zero", "preload"), False)
-    armed_zone = armed = pressed_arm = False
+    armed_zone = pressed_arm = False
+    # Without a reset it may be armed from what was played before.
+    armed = contract.reset is None and not stimulus.power_up and seed % 2 == 0
+    if contract.reset is None and stimulus.power_up:
+        now = contract.start.count
     shown, asked = rng.randint(count.lowest, count.highest), False
 
     def at(name: str, k: int) -> int:

@@ -16,6 +16,7 @@ from registers import run
 from tbkit.contract import Contract, Index, Input, Output, Port, Slice, Span
 from tbkit.errors import UnfitError
 from tbkit.findings import KINDS, Score
+from tbkit.inputs import acts
 from tbkit.lineoracle import expect
 from tbkit.profile import Action, Disturbance, Drive, Encoder, Illegal, IndexMark, Move, Press, Profile, Rest, Walk, Where
 from tbkit.regression import builtin_profiles
@@ -60,6 +61,7 @@ GRID = {
     "arm-edge": of(2, 3, index=Index(1, 0, edge=True), roles=(role("arm"),)),
     "arm-once": of(2, index=Index(1, 1, edge=True), roles=(role("arm-once"),)),
     "arm-once-late": of(2, 4, index=Index(0, 1, edge=True, value=9), roles=(role("arm-once"), CLEAR), direction="always"),
+    "arm-once-no-reset": of(2, index=Index(1, 1, edge=True, value=40), roles=(role("arm-once"),), reset="none"),
     "arm-once-pulse": of(2, index=Index(None, 1, action="pulse", output=out()), roles=(role("arm-once"),)),
     "latch": of(3, roles=(role("latch"),), direction="always"),
     "latch-edge": of(4, 2, roles=(role("latch", edge=True), CLEAR), direction="", step=True),
@@ -86,6 +88,16 @@ def compiled(made: Contract, name: str, seed: int = 1) -> Stimulus | None:
 
 
 INPUT_PROFILES = ("zero", "preload", "disable", "disarm", "arm")
+
+
+def test_one_input_does_not_close_what_another_leaves_open() -> None:
+    """Where the count's latency has a range, which steps a clear meets is open, whether the index is armed besides or not."""
+    made = of((2, 4), index=Index(1, 1, edge=True), roles=(CLEAR, role("arm-once")), apart={"index": 2})  # type: ignore[arg-type]
+    alone = replace(made, inputs=(CLEAR,))
+    pressed = {"zero": [(100, 103)], "arm": [(200, 201)], "reset": [(0, 4)]}
+    opens = [acts(one, lambda deed: pressed.get(deed, []), [], [], 1000).opens for one in (alone, made)]
+    assert len(opens[0]) == 1
+    assert opens[0] == opens[1]
 
 
 @pytest.mark.parametrize("name", GRID)
