@@ -17,9 +17,10 @@ from tbkit.contract import A_LEADS_B, Contract
 from tbkit.encoder import LINES, Edges, Line
 from tbkit.errors import SimulatorError
 from tbkit.motion import Crossings
+from tbkit.ordered import merged
 from tbkit.simulators import Simulator
 from tbkit.stimulus import DRIVES, SIGNALS, Stimulus, Unfold
-from tbkit.trace import Series, Trace, read_trace
+from tbkit.trace import Series, Trace, compressed, read_trace
 
 #: Clocks after which everything a decoder does in answer to an edge is over.
 GAP = 200
@@ -131,3 +132,28 @@ def changes(series: Series, begin: int, end: int) -> list[tuple[int, int]]:
     """(clock, new value) of every change after ``begin`` and up to ``end``."""
     first, last = np.searchsorted(series.period, [begin, end], side="right").tolist()
     return list(zip(series.period[first:last].tolist(), series.value[first:last].tolist(), strict=True))
+
+
+def known_changes(series: Series, begin: int, end: int) -> list[tuple[int, int]]:
+    """Changes to values that are known."""
+    return [(clock, value) for clock, value in changes(series, begin, end) if value_at(series, clock) is not None]
+
+
+def total(series: Series, kind: str, idle: int) -> Series:
+    """How often an output has told a step: in every clock of a pulse, at each change of a toggle, as a level rises."""
+    told = np.append(False, ~(series.unknown[1:] | series.unknown[:-1]))
+    if kind != "toggle":
+        told &= series.value != idle
+    lengths = (
+        np.diff(series.period, append=series.period[-1:] + 1)[told] if kind == "pulse" else np.ones(int(told.sum()), dtype=np.int64)
+    )
+    begins = np.repeat(series.period[told], lengths)
+    steps = begins + np.arange(len(begins)) - np.repeat(np.cumsum(lengths) - lengths, lengths)
+    return Series(np.append(0, steps), np.arange(len(steps) + 1), np.zeros(len(steps) + 1, dtype=bool))
+
+
+def together(up: Series, down: Series) -> Series:
+    """Steps on two outputs as one series: up less down once they are totals."""
+    period = merged(up.period, down.period)
+    up_at, down_at = up.at(period), down.at(period)
+    return compressed(period, 2 * up.value[up_at] - 2 * down.value[down_at], up.unknown[up_at] | down.unknown[down_at])
